@@ -55,7 +55,10 @@ struct fault {
 	char message[512];
 };
 
-/* Collected faults; past FAULTS_MOST they are only counted. */
+/*
+ * Collected faults; past FAULTS_MOST they are only counted. The same message at
+ * the same place is added once, since sweeps read a node many times.
+ */
 struct faults {
 	struct fault items[FAULTS_MOST];
 	size_t count;
@@ -64,8 +67,10 @@ struct faults {
 
 void faults_add(struct faults *faults, struct position at, const char *format, ...)
     __attribute__((format(printf, 3, 4)));
+/* All that were added, those past FAULTS_MOST too: compare before and after. */
+size_t faults_total(const struct faults *faults);
 /*
- * Writes all of them, by position:
+ * Writes all of them, by file and position:
  *   rig.yaml:12:9: unknown key 'tiemout' in a link; did you mean 'reply_timeout'?
  *      12 |   drive_wire: {tcp: "127.0.0.1:15020", tiemout: 100 ms}
  *         |                                        ^
@@ -87,5 +92,9 @@ int yaml_load_bytes(const char *path, const char *bytes, size_t length, struct a
 struct yaml_node *yaml_get(const struct yaml_node *mapping, const char *key);
 /* "a mapping", "a list", "text". */
 const char *yaml_kind_name(enum yaml_kind kind);
+/* Text of a file as a message quotes it: at most 40 characters, visible escapes, "..." where cut.
+ */
+enum { YAML_SHOWN = 200 };
+const char *yaml_shown(const char *bytes, size_t length, char buffer[YAML_SHOWN]);
 
 #endif
