@@ -20,7 +20,7 @@ static const struct option_row *find(const struct option_row *rows, size_t count
 static int unknown(const struct option_row *rows, size_t count, const char *verb,
                    const char *argument, size_t length, struct err *reterr)
 {
-	const char *names[64];
+	const char *names[64] = {0};
 	char word[64];
 	size_t known = count < 64 ? count : 64;
 	for (size_t i = 0; i < known; i++)
