@@ -83,6 +83,13 @@ struct condition {
 /* True where the value fulfils the condition; NaN fulfils none. */
 bool condition_holds(const struct condition *condition, double value);
 
+/* An assignment that the stimulus made: known to be in effect from an instant in the interval. */
+struct command {
+	int channel;
+	double value; /* in the channel's unit */
+	int64_t earliest_ns, latest_ns;
+};
+
 struct check_input {
 	/* One per channel of the rig, in the rig's order; rows == 0: not sampled. */
 	const struct series *series;
@@ -92,6 +99,8 @@ struct check_input {
 	size_t mark_count;
 	const struct outcome *outcomes;
 	size_t outcome_count;
+	const struct command *commands; /* of this test, in the order in which they were made */
+	size_t command_count;
 	const struct machine *machine;
 	int64_t begin_ns, end_ns; /* of the test's stimulus */
 	int64_t sample_ns;        /* the interval that the suite asked for */
@@ -102,7 +111,12 @@ struct check_kind {
 	const char *name;
 	const char *text; /* one line */
 	const struct field_table *fields;
-	size_t params_size; /* the loader zeroes params, then applies defaults */
+	/*
+	 * The loader zeroes params, sets what is absent (channels, marks and
+	 * condition.channel -1, levels NaN, a window {-1, 0, 0}), then applies
+	 * the defaults of the fields and of the metrics' options.
+	 */
+	size_t params_size;
 	const struct metric_kind *metrics;
 	size_t metric_count;
 	/*

@@ -1,7 +1,8 @@
 /* SPDX-License-Identifier: Apache-2.0 */
 /*
- * One row a kind of check. Included with CHECK(name) defined; CMake reads it
- * too and adds checks/NAME.c. To add a check: one file, one row, one test.
+ * One row a kind of check: the file checks/NAME.c ends with the descriptor
+ * `const struct check_kind check_NAME`. Included by check_table.c with
+ * CHECK(name) defined. To add a check: one file, one row, one test.
  */
 CHECK(step_response)
 CHECK(torque_angle)

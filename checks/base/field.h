@@ -38,6 +38,7 @@ enum field_kind {
 enum field_flags {
 	FIELD_REQUIRED = 1,
 	FIELD_POSITIVE = 2, /* above zero, whatever `least` says */
+	FIELD_COMMAND = 4,  /* FIELD_CHANNEL: a commanded channel; it need not be sampled */
 };
 
 struct int_list {
@@ -55,6 +56,12 @@ struct field {
 	const char *const *choices;        /* FIELD_CHOICE, ends with NULL */
 	size_t offset;
 	const char *text; /* one line for people */
+	/*
+	 * FIELD_LEVEL, FIELD_LEVELS: the key of the FIELD_CHANNEL whose unit and
+	 * named values apply; NULL: "channel". A value name (encoder_loss) stands
+	 * for its number.
+	 */
+	const char *of;
 };
 
 struct field_table {
