@@ -1,0 +1,13 @@
+/* SPDX-License-Identifier: Apache-2.0 */
+#ifndef DRIVETRIAL_LOCK_H
+#define DRIVETRIAL_LOCK_H
+/*
+ * One run per rig: a lock that the kernel releases on any death of its holder.
+ * The lock file stays; it names the last holder for the message.
+ */
+#include "err.h"
+
+/* name: of the rig. *ret_fd is closed by the caller (or by death). Errors: ERR_BUSY, ERR_OUTPUT. */
+int lock_take(const char *name, int *ret_fd, struct err *reterr);
+
+#endif

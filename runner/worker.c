@@ -1,0 +1,785 @@
+/* SPDX-License-Identifier: Apache-2.0 */
+/*
+ * See worker.h. One slot for jobs is enough, since the conductor commands in
+ * the order of the suite and waits for each reply; a queue would let a command
+ * of an aborted test slip out behind the safe state.
+ *
+ * Thread rule: fields under "tick only" belong to worker_tick(); fields under
+ * "shared" are touched with the mutex held, and the mutex is never held while
+ * the link blocks.
+ */
+#include "worker.h"
+
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+#include <sys/prctl.h>
+#include <time.h>
+
+enum job_state { JOB_FREE = 0, JOB_POSTED, JOB_RUNNING, JOB_DONE };
+
+struct device_state {
+	bool silent;
+	int64_t last_sent_ns, last_received_ns;
+	int64_t last_good_ns;
+	int64_t pause_until_ns;
+	double life;
+	int64_t life_moved_ns;
+};
+
+struct worker {
+	struct worker_config config;
+	const struct rig *rig;
+	/* tick only */
+	struct link *link;
+	bool open, busy, busy_is_job;
+	int64_t busy_since_ns, next_open_ns, open_pause_ns;
+	int busy_device;
+	struct link_request request;
+	struct link_reply reply;
+	const struct poll_block *polled;
+	const struct poll_plan *plan;
+	int64_t slots[GROUPS_MOST];
+	int round_group; /* -1: none under way */
+	size_t round_next;
+	struct row *row;
+	struct ring rows, events;
+	/* shared */
+	pthread_mutex_t mutex;
+	pthread_cond_t cond;
+	bool woken, quit, rest, renew, fresh;
+	enum job_state job;
+	bool job_dropped;
+	int job_device;
+	struct link_request job_request;
+	struct link_reply job_reply;
+	const struct poll_plan *next_plan;
+	bool plan_changed;
+	struct device_state *devices;
+	double *latest;
+	struct watch watches[WATCHES_MOST];
+	bool watch_used[WATCHES_MOST];
+	struct worker_counts counts;
+	bool shared_busy;
+	int shared_busy_device;
+	int64_t shared_busy_since_ns, plan_since_ns;
+	char last_error[192];
+};
+
+static void lock(struct worker *worker)
+{
+	(void)pthread_mutex_lock(&worker->mutex);
+}
+
+static void unlock(struct worker *worker)
+{
+	(void)pthread_mutex_unlock(&worker->mutex);
+}
+
+static const struct rig_link *link_of(const struct worker *worker)
+{
+	return &worker->rig->links[worker->config.link_index];
+}
+
+int worker_new(const struct worker_config *config, struct worker **ret_worker, struct err *reterr)
+{
+	struct worker *worker = calloc(1, sizeof *worker);
+	if (!worker)
+		return err_set(reterr, ERR_NOMEM, "no memory for the worker of a link");
+	const struct rig *rig = config->rig;
+	worker->config = *config;
+	worker->rig = rig;
+	worker->link = config->link;
+	worker->round_group = -1;
+	worker->open_pause_ns = 50 * NS_PER_MS;
+	worker->devices = calloc(rig->device_count, sizeof *worker->devices);
+	worker->latest = calloc(rig->channel_count, sizeof *worker->latest);
+	size_t row_size = sizeof *worker->row + config->row_values_most * sizeof(double);
+	worker->row = calloc(1, row_size);
+	(void)pthread_mutex_init(&worker->mutex, NULL);
+	(void)pthread_cond_init(&worker->cond, NULL);
+	if (!worker->devices || !worker->latest || !worker->row ||
+	    ring_init(&worker->rows, row_size, 16384, reterr) < 0 ||
+	    ring_init(&worker->events, sizeof(struct journal_event), 256, reterr) < 0) {
+		(void)err_set(reterr, ERR_NOMEM, "no memory for the worker of a link");
+		worker->link = NULL; /* stays the caller's */
+		worker_free(worker);
+		return -1;
+	}
+	for (size_t i = 0; i < rig->channel_count; i++)
+		worker->latest[i] = NAN;
+	for (size_t i = 0; i < rig->device_count; i++)
+		worker->devices[i].life = NAN;
+	*ret_worker = worker;
+	return 0;
+}
+
+void worker_free(struct worker *worker)
+{
+	if (!worker)
+		return;
+	link_release(worker->link);
+	ring_release(&worker->rows);
+	ring_release(&worker->events);
+	free(worker->devices);
+	free(worker->latest);
+	free(worker->row);
+	(void)pthread_cond_destroy(&worker->cond);
+	(void)pthread_mutex_destroy(&worker->mutex);
+	free(worker);
+}
+
+/* What happened on the link, for the journal. The ring is large; a full one only costs the line. */
+static void tell(struct worker *worker, int64_t now_ns, const char *text)
+{
+	struct journal_event event = {.kind = JOURNAL_LINK,
+	                              .time_ns = now_ns,
+	                              .suite = -1,
+	                              .test = -1,
+	                              .device = -1,
+	                              .link = worker->config.link_index,
+	                              .channel = -1,
+	                              .value = NAN};
+	(void)snprintf(event.text, sizeof event.text, "%s", text);
+	(void)ring_push(&worker->events, &event, sizeof event);
+	lock(worker);
+	(void)snprintf(worker->last_error, sizeof worker->last_error, "%s", text);
+	unlock(worker);
+}
+
+/* ---- rows and watches -------------------------------------------------- */
+
+static bool life_stands(const struct worker *worker, int device, int64_t now_ns)
+{
+	const struct rig_device *rig_device = &worker->rig->devices[device];
+	const struct device_state *state = &worker->devices[device];
+	return rig_device->life >= 0 && !isnan(state->life) &&
+	       now_ns - state->life_moved_ns > rig_device->life_within_ns;
+}
+
+static double channel_now(const struct worker *worker, int channel)
+{
+	const struct rig_channel *rig_channel = &worker->rig->channels[channel];
+	if (rig_channel->place != PLACE_DERIVED)
+		return worker->latest[channel];
+	double inputs[DERIVE_INPUTS_MOST];
+	struct channel_info infos[DERIVE_INPUTS_MOST];
+	for (int i = 0; i < DERIVE_INPUTS_MOST; i++) {
+		int input = rig_channel->derivation.inputs[i];
+		inputs[i] = input >= 0 ? channel_now(worker, input) : (double)NAN;
+		infos[i] = worker->rig->infos[input >= 0 ? input : channel];
+	}
+	return derive_value(&rig_channel->derivation, infos, inputs, &worker->rig->infos[channel],
+	                    &worker->rig->machine);
+}
+
+static bool block_feeds(const struct worker *worker, const struct read_block *block, int channel)
+{
+	const struct rig_channel *rig_channel = &worker->rig->channels[channel];
+	if (rig_channel->place == PLACE_DERIVED) {
+		for (int i = 0; i < DERIVE_INPUTS_MOST; i++)
+			if (rig_channel->derivation.inputs[i] >= 0 &&
+			    block_feeds(worker, block, rig_channel->derivation.inputs[i]))
+				return true;
+		return false;
+	}
+	for (size_t i = 0; i < block->channel_count; i++)
+		if (block->channels[i] == channel)
+			return true;
+	return false;
+}
+
+/* Feeds the watches; returns a violated interlock or NULL. Mutex held. */
+static const struct watch *feed_watches(struct worker *worker, const struct read_block *block,
+                                        bool good, const struct link_reply *reply)
+{
+	const struct watch *violated = NULL;
+	bool stands = life_stands(worker, block->device, reply->received_ns);
+	for (int i = 0; i < WATCHES_MOST; i++) {
+		struct watch *watch = &worker->watches[i];
+		if (!worker->watch_used[i] || !watch->active ||
+		    !block_feeds(worker, block, watch->condition.channel))
+			continue;
+		const struct channel_info *info = &worker->rig->infos[watch->condition.channel];
+		bool usable = good && !(stands && watch->kind == WATCH_AWAIT);
+		watch_row(watch, reply->sent_ns - info->refresh_ns - info->delay_most_ns,
+		          reply->received_ns - info->delay_least_ns,
+		          usable ? channel_now(worker, watch->condition.channel) : (double)NAN);
+		if (watch->fired && watch->kind == WATCH_INTERLOCK && !violated)
+			violated = watch;
+	}
+	return violated;
+}
+
+static void note_life(struct worker *worker, int device, int64_t now_ns)
+{
+	int life = worker->rig->devices[device].life;
+	struct device_state *state = &worker->devices[device];
+	if (life < 0 || isnan(worker->latest[life]))
+		return;
+	if (isnan(state->life) || worker->latest[life] != state->life) {
+		state->life = worker->latest[life];
+		state->life_moved_ns = now_ns;
+	}
+}
+
+static void interlock_violated(struct worker *worker, const struct watch *watch, int64_t now_ns)
+{
+	int channel = watch->condition.channel;
+	const struct channel_info *info = &worker->rig->infos[channel];
+	struct journal_event event = {.kind = JOURNAL_INTERLOCK,
+	                              .time_ns = now_ns,
+	                              .suite = -1,
+	                              .test = -1,
+	                              .device = -1,
+	                              .link = worker->config.link_index,
+	                              .channel = channel,
+	                              .earliest_ns = watch->became_earliest_ns,
+	                              .latest_ns = watch->became_latest_ns,
+	                              .value = watch->value};
+	(void)snprintf(event.text, sizeof event.text, "%s is %.6g %s", info->name, watch->value,
+	               info->unit->name);
+	if (stop_raise(worker->config.stop, "interlock: %s", event.text))
+		(void)ring_push(&worker->events, &event, sizeof event);
+}
+
+static void row_out(struct worker *worker, const struct poll_block *polled, bool good)
+{
+	const struct read_block *block = polled->read;
+	struct row *row = worker->row;
+	struct watch violated_copy;
+	row->generation = worker->plan->generation;
+	row->block = block->id;
+	row->sent_ns = worker->reply.sent_ns;
+	row->received_ns = worker->reply.received_ns;
+	row->count = block->channel_count;
+	for (size_t i = 0; i < block->channel_count; i++)
+		row->values[i] = good ? block_value(worker->rig, block, block->channels[i], &worker->reply)
+		                      : (double)NAN;
+	lock(worker);
+	for (size_t i = 0; i < block->channel_count; i++)
+		worker->latest[block->channels[i]] = row->values[i];
+	if (good)
+		note_life(worker, block->device, row->received_ns);
+	const struct watch *violated = feed_watches(worker, block, good, &worker->reply);
+	if (violated)
+		violated_copy = *violated;
+	bool rest = worker->rest;
+	worker->counts.rows++;
+	unlock(worker);
+	if (violated && !rest)
+		interlock_violated(worker, &violated_copy, row->received_ns);
+	if (row->generation >= 0 &&
+	    !ring_push(&worker->rows, row, sizeof *row + row->count * sizeof(double)))
+		(void)stop_raise(worker->config.stop,
+		                 "samples come faster than they can be written to the disk");
+}
+
+/* ---- the end of a transaction ------------------------------------------ */
+
+static void count_reply(struct worker *worker, const struct link_reply *reply)
+{
+	struct worker_counts *counts = &worker->counts;
+	counts->requests++;
+	counts->timeouts += reply->status == LINK_TIMEOUT;
+	counts->garbled += reply->status == LINK_GARBLED;
+	counts->exceptions += reply->status == LINK_EXCEPTION;
+	counts->lost_replies += reply->status != LINK_OK && reply->status != LINK_EXCEPTION;
+}
+
+static void finish(struct worker *worker, int64_t now_ns)
+{
+	const struct link_reply *reply = &worker->reply;
+	bool answered = reply->status == LINK_OK || reply->status == LINK_EXCEPTION;
+	const struct poll_block *polled = worker->polled;
+	worker->busy = false;
+	lock(worker);
+	count_reply(worker, reply);
+	struct device_state *device = &worker->devices[worker->busy_device];
+	device->last_sent_ns = reply->sent_ns;
+	device->last_received_ns = reply->received_ns;
+	if (answered)
+		device->last_good_ns = reply->received_ns;
+	device->pause_until_ns =
+	    reply->received_ns + worker->rig->devices[worker->busy_device].minimum_pause_ns;
+	worker->shared_busy = false;
+	if (worker->busy_is_job) {
+		worker->job = worker->job_dropped ? JOB_FREE : JOB_DONE;
+		worker->job_reply = *reply;
+	}
+	unlock(worker);
+	if (!answered && reply->status != LINK_STOPPED) {
+		char text[256];
+		(void)snprintf(text, sizeof text, "%s: %s", worker->rig->devices[worker->busy_device].name,
+		               reply->message[0] ? reply->message : "no reply");
+		tell(worker, now_ns, text);
+	}
+	if (reply->status == LINK_LOST || reply->status == LINK_STOPPED) {
+		link_close(worker->link);
+		worker->open = false;
+		worker->next_open_ns = now_ns + (reply->status == LINK_LOST ? worker->open_pause_ns : 0);
+	}
+	if (!worker->busy_is_job)
+		row_out(worker, polled, reply->status == LINK_OK);
+	worker->config.wake(worker->config.wake_context);
+}
+
+/* ---- what comes next --------------------------------------------------- */
+
+static void skip_slots(struct worker *worker, int group, int64_t now_ns)
+{
+	int64_t period = worker->plan->groups[group].period_ns;
+	int64_t slot = worker->slots[group] + period;
+	if (period == 0) {
+		worker->slots[group] = now_ns;
+		return;
+	}
+	if (slot < now_ns) {
+		int64_t missed = (now_ns - slot + period - 1) / period;
+		slot += missed * period;
+		lock(worker);
+		worker->counts.missed_slots += (uint64_t)missed;
+		unlock(worker);
+	}
+	worker->slots[group] = slot;
+}
+
+static bool is_silent(struct worker *worker, int device)
+{
+	lock(worker);
+	bool silent = worker->devices[device].silent;
+	unlock(worker);
+	return silent;
+}
+
+/* The next block of the round under way, or of the group whose slot is due; NULL and *due. */
+static const struct poll_block *next_poll(struct worker *worker, int64_t now_ns, int64_t *due)
+{
+	const struct poll_plan *plan = worker->plan;
+	*due = INT64_MAX;
+	if (!plan)
+		return NULL;
+	for (size_t turns = 0; turns < 2; turns++) {
+		if (worker->round_group >= 0) {
+			const struct poll_group *group = &plan->groups[worker->round_group];
+			while (worker->round_next < group->count) {
+				const struct poll_block *block = &group->blocks[worker->round_next];
+				const struct device_state *device = &worker->devices[block->read->device];
+				if (device->pause_until_ns > now_ns) {
+					*due = device->pause_until_ns;
+					return NULL;
+				}
+				worker->round_next++;
+				if (!is_silent(worker, block->read->device))
+					return block;
+			}
+			skip_slots(worker, worker->round_group, now_ns);
+			worker->round_group = -1;
+		}
+		int first = -1;
+		for (size_t i = 0; i < plan->group_count; i++)
+			if (plan->groups[i].count > 0 && (first < 0 || worker->slots[i] < worker->slots[first]))
+				first = (int)i;
+		if (first < 0)
+			return NULL;
+		if (worker->slots[first] > now_ns) {
+			*due = worker->slots[first];
+			return NULL;
+		}
+		worker->round_group = first;
+		worker->round_next = 0;
+	}
+	*due = now_ns + NS_PER_MS; /* every block is of a silent device */
+	return NULL;
+}
+
+static void adopt_plan(struct worker *worker, int64_t now_ns)
+{
+	lock(worker);
+	if (worker->plan_changed) {
+		worker->plan = worker->next_plan;
+		worker->plan_changed = false;
+		worker->round_group = -1;
+		worker->plan_since_ns = now_ns;
+		for (int i = 0; i < GROUPS_MOST; i++)
+			worker->slots[i] = now_ns;
+		/* What was not read lately is not known. */
+		for (size_t i = 0; i < worker->rig->channel_count; i++)
+			worker->latest[i] = NAN;
+	}
+	unlock(worker);
+}
+
+/* A polled device that has given no good answer for too long ends the run. */
+static void check_stale(struct worker *worker, int64_t now_ns)
+{
+	const struct poll_plan *plan = worker->plan;
+	if (!plan || worker->rest)
+		return;
+	for (size_t g = 0; g < plan->group_count; g++)
+		for (size_t b = 0; b < plan->groups[g].count; b++) {
+			int index = plan->groups[g].blocks[b].read->device;
+			const struct device_state *device = &worker->devices[index];
+			int64_t since = device->last_good_ns > worker->plan_since_ns ? device->last_good_ns
+			                                                             : worker->plan_since_ns;
+			if (!device->silent && now_ns - since > worker->rig->stale_after_ns &&
+			    now_ns - since > 2 * plan->groups[g].period_ns)
+				(void)stop_raise(worker->config.stop,
+				                 "link %s: no good answer from %s for %.3g s%s%s",
+				                 link_of(worker)->name, worker->rig->devices[index].name,
+				                 (double)(now_ns - since) / 1e9, worker->last_error[0] ? "; " : "",
+				                 worker->last_error);
+		}
+}
+
+static bool ensure_open(struct worker *worker, int64_t now_ns, int64_t *due)
+{
+	lock(worker);
+	bool renew = worker->renew;
+	worker->renew = false;
+	int64_t pause_most = worker->rest ? 50 * NS_PER_MS : NS_PER_S;
+	unlock(worker);
+	if (renew && worker->open) {
+		link_close(worker->link);
+		worker->open = false;
+		worker->next_open_ns = now_ns;
+	}
+	if (worker->open)
+		return true;
+	if (worker->open_pause_ns > pause_most)
+		worker->open_pause_ns = pause_most;
+	if (now_ns < worker->next_open_ns && worker->next_open_ns - now_ns <= pause_most) {
+		*due = worker->next_open_ns;
+		return false;
+	}
+	struct err err = {0};
+	if (link_open(worker->link, &err) < 0) {
+		tell(worker, now_ns, err.message);
+		int64_t after = clock_now(&worker->config.clock);
+		worker->next_open_ns = (after > now_ns ? after : now_ns) + worker->open_pause_ns;
+		worker->open_pause_ns *= 2;
+		*due = worker->next_open_ns;
+		return false;
+	}
+	worker->open = true;
+	worker->open_pause_ns = 50 * NS_PER_MS;
+	lock(worker);
+	worker->counts.reconnects++;
+	worker->fresh = true;
+	unlock(worker);
+	return true;
+}
+
+static void begin(struct worker *worker, int device, int64_t now_ns)
+{
+	struct err err = {0};
+	lock(worker);
+	worker->shared_busy = true;
+	worker->shared_busy_device = device;
+	worker->shared_busy_since_ns = now_ns;
+	unlock(worker);
+	worker->busy = true;
+	worker->busy_device = device;
+	worker->busy_since_ns = now_ns;
+	if (link_begin(worker->link, &worker->request, now_ns, &err) == 0)
+		return;
+	worker->reply.status = LINK_LOST;
+	worker->reply.sent_ns = now_ns;
+	worker->reply.received_ns = clock_now(&worker->config.clock);
+	(void)snprintf(worker->reply.message, sizeof worker->reply.message, "%.150s", err.message);
+	finish(worker, now_ns);
+}
+
+/* Takes the posted job, unless it is for a silent device or a pause holds it back. */
+static bool take_job(struct worker *worker, int64_t now_ns, int *device, int64_t *due)
+{
+	bool taken = false;
+	lock(worker);
+	if (worker->job == JOB_POSTED) {
+		struct device_state *state = &worker->devices[worker->job_device];
+		if (state->pause_until_ns > now_ns) {
+			*due = state->pause_until_ns;
+		} else {
+			worker->job = JOB_RUNNING;
+			worker->request = worker->job_request;
+			*device = worker->job_device;
+			taken = true;
+		}
+	}
+	unlock(worker);
+	return taken;
+}
+
+/* Whether the conductor wants something of the link, beside polls. */
+static bool is_wanted(struct worker *worker)
+{
+	lock(worker);
+	bool waits = worker->job == JOB_POSTED || worker->renew;
+	unlock(worker);
+	return waits;
+}
+
+int64_t worker_tick(struct worker *worker, int64_t now_ns)
+{
+	if (worker->busy) {
+		int64_t due = link_end(worker->link, now_ns, &worker->reply);
+		if (due > now_ns)
+			return due;
+		int64_t after = clock_now(&worker->config.clock);
+		now_ns = after > now_ns ? after : now_ns;
+		finish(worker, now_ns);
+	}
+	adopt_plan(worker, now_ns);
+	lock(worker);
+	check_stale(worker, now_ns);
+	unlock(worker);
+	int64_t due = INT64_MAX, open_due = INT64_MAX;
+	bool wanted = is_wanted(worker) || worker->plan;
+	if (!wanted || !ensure_open(worker, now_ns, &open_due))
+		return open_due;
+	int64_t after = clock_now(&worker->config.clock);
+	now_ns = after > now_ns ? after : now_ns;
+	int device = 0;
+	if (take_job(worker, now_ns, &device, &due)) {
+		worker->busy_is_job = true;
+		worker->polled = NULL;
+	} else {
+		int64_t poll_due;
+		worker->polled = next_poll(worker, now_ns, &poll_due);
+		if (!worker->polled)
+			return poll_due < due ? poll_due : due;
+		device = worker->polled->read->device;
+		worker->busy_is_job = false;
+		worker->request = worker->polled->request;
+	}
+	begin(worker, device, now_ns);
+	return now_ns;
+}
+
+/* ---- the thread -------------------------------------------------------- */
+
+void worker_loop(struct worker *worker)
+{
+	(void)prctl(PR_SET_TIMERSLACK, 1UL);
+	for (;;) {
+		int64_t now = clock_now(&worker->config.clock);
+		int64_t due = worker_tick(worker, now);
+		lock(worker);
+		while (!worker->quit && !worker->woken) {
+			now = clock_now(&worker->config.clock);
+			if (due <= now)
+				break;
+			int64_t pause = due == INT64_MAX || due - now > NS_PER_S ? NS_PER_S : due - now;
+			struct timespec at;
+			(void)clock_gettime(CLOCK_MONOTONIC, &at);
+			int64_t ns = at.tv_nsec + pause;
+			at.tv_sec += ns / NS_PER_S;
+			at.tv_nsec = ns % NS_PER_S;
+			(void)pthread_cond_clockwait(&worker->cond, &worker->mutex, CLOCK_MONOTONIC, &at);
+		}
+		worker->woken = false;
+		bool quit = worker->quit;
+		unlock(worker);
+		if (quit)
+			return;
+	}
+}
+
+static void wake_worker(struct worker *worker)
+{
+	worker->woken = true;
+	(void)pthread_cond_signal(&worker->cond);
+}
+
+void worker_quit(struct worker *worker)
+{
+	lock(worker);
+	worker->quit = true;
+	wake_worker(worker);
+	unlock(worker);
+}
+
+/* ---- the conductor's side ---------------------------------------------- */
+
+void worker_post(struct worker *worker, const struct link_request *request, int device)
+{
+	lock(worker);
+	worker->job = JOB_POSTED;
+	worker->job_dropped = false;
+	worker->job_device = device;
+	worker->job_request = *request;
+	wake_worker(worker);
+	unlock(worker);
+}
+
+bool worker_done(struct worker *worker, struct link_reply *ret_reply)
+{
+	lock(worker);
+	bool done = worker->job == JOB_DONE;
+	if (done) {
+		*ret_reply = worker->job_reply;
+		worker->job = JOB_FREE;
+	}
+	unlock(worker);
+	return done;
+}
+
+void worker_drop_job(struct worker *worker)
+{
+	lock(worker);
+	if (worker->job == JOB_POSTED || worker->job == JOB_DONE)
+		worker->job = JOB_FREE;
+	else if (worker->job == JOB_RUNNING)
+		worker->job_dropped = true;
+	unlock(worker);
+}
+
+bool worker_job_free(struct worker *worker)
+{
+	lock(worker);
+	bool is_free = worker->job == JOB_FREE;
+	unlock(worker);
+	return is_free;
+}
+
+void worker_set_plan(struct worker *worker, const struct poll_plan *plan)
+{
+	lock(worker);
+	worker->next_plan = plan;
+	worker->plan_changed = true;
+	wake_worker(worker);
+	unlock(worker);
+}
+
+void worker_silence(struct worker *worker, int device, bool silent)
+{
+	lock(worker);
+	worker->devices[device].silent = silent;
+	if (!silent) {
+		/* The silence itself is no staleness, and no standing life counter. */
+		worker->devices[device].last_good_ns = clock_now(&worker->config.clock);
+		worker->devices[device].life = NAN;
+	}
+	wake_worker(worker);
+	unlock(worker);
+}
+
+bool worker_silent(struct worker *worker, int device, int64_t *ret_sent, int64_t *ret_received)
+{
+	lock(worker);
+	bool settled = !(worker->shared_busy && worker->shared_busy_device == device);
+	*ret_sent = worker->devices[device].last_sent_ns;
+	*ret_received = worker->devices[device].last_received_ns;
+	unlock(worker);
+	return settled;
+}
+
+int worker_watch_add(struct worker *worker, enum watch_kind kind, const struct condition *condition,
+                     int64_t not_before_ns)
+{
+	int found = -1;
+	lock(worker);
+	for (int i = 0; i < WATCHES_MOST && found < 0; i++)
+		if (!worker->watch_used[i])
+			found = i;
+	if (found >= 0) {
+		worker->watch_used[found] = true;
+		watch_start(&worker->watches[found], kind, condition, not_before_ns);
+	}
+	unlock(worker);
+	return found;
+}
+
+void worker_watch_get(struct worker *worker, int watch, struct watch *ret_watch)
+{
+	lock(worker);
+	*ret_watch = worker->watches[watch];
+	unlock(worker);
+}
+
+void worker_watch_remove(struct worker *worker, int watch)
+{
+	if (watch < 0)
+		return;
+	lock(worker);
+	worker->watch_used[watch] = false;
+	unlock(worker);
+}
+
+void worker_rest_mode(struct worker *worker, bool on)
+{
+	lock(worker);
+	worker->rest = on;
+	for (size_t i = 0; i < worker->rig->device_count; i++)
+		worker->devices[i].silent = false;
+	if (!on) {
+		/* Interlocks start afresh with the next test. */
+		for (int i = 0; i < WATCHES_MOST; i++)
+			if (worker->watch_used[i] && worker->watches[i].kind == WATCH_INTERLOCK) {
+				struct condition condition = worker->watches[i].condition;
+				watch_start(&worker->watches[i], WATCH_INTERLOCK, &condition, 0);
+			}
+	}
+	wake_worker(worker);
+	unlock(worker);
+}
+
+void worker_renew(struct worker *worker)
+{
+	lock(worker);
+	worker->renew = true;
+	worker->fresh = false;
+	wake_worker(worker);
+	unlock(worker);
+}
+
+bool worker_fresh(struct worker *worker)
+{
+	lock(worker);
+	bool fresh = worker->fresh && !worker->renew;
+	unlock(worker);
+	return fresh;
+}
+
+void worker_break_off(struct worker *worker, int64_t now_ns, int64_t longer_than_ns)
+{
+	lock(worker);
+	bool blocked = worker->shared_busy && now_ns - worker->shared_busy_since_ns > longer_than_ns;
+	unlock(worker);
+	if (blocked)
+		link_interrupt(worker->link);
+}
+
+double worker_latest(struct worker *worker, int channel)
+{
+	lock(worker);
+	double value = channel_now(worker, channel);
+	unlock(worker);
+	return value;
+}
+
+struct worker_counts worker_counts(struct worker *worker)
+{
+	lock(worker);
+	struct worker_counts counts = worker->counts;
+	unlock(worker);
+	return counts;
+}
+
+const char *worker_last_error(struct worker *worker, char *buffer, size_t size)
+{
+	lock(worker);
+	(void)snprintf(buffer, size, "%s", worker->last_error);
+	unlock(worker);
+	return buffer;
+}
+
+struct ring *worker_rows(struct worker *worker)
+{
+	return &worker->rows;
+}
+
+struct ring *worker_events(struct worker *worker)
+{
+	return &worker->events;
+}
