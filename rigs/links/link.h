@@ -4,10 +4,11 @@
 /*
  * One wire: requests go out, replies come in, one at a time.
  *
- * begin() sends a request; end() gives its reply. A backend that blocks
- * (libmodbus) does so in end(), for at most the reply timeout; a backend in
- * virtual time (the modelled bench) returns when the reply is due instead. The
- * caller is the same state machine for both:
+ * begin() takes a request; end() gives its reply. A backend that blocks (TCP,
+ * RTU) does so in end(), for at most the reply timeout (where it must first
+ * reconnect, or wait for a serial line to fall silent, that comes on top); a
+ * backend in virtual time (the modelled bench) returns when the reply is due
+ * instead. The caller is the same state machine for both:
  *
  *     link_begin(link, &request, now, &err);
  *     int64_t due = link_end(link, clock(), &reply);
@@ -90,7 +91,9 @@ struct link_ops {
 	             struct err *reterr);
 	/* Returns now_ns or less once *ret_reply is filled, else when to ask again. */
 	int64_t (*end)(struct link *link, int64_t now_ns, struct link_reply *ret_reply);
-	void (*interrupt)(struct link *link); /* any thread; breaks off a blocked end() */
+	/* Any thread: breaks off the request between begin() and the return of end();
+	 * does nothing where there is none. */
+	void (*interrupt)(struct link *link);
 	void (*release)(struct link *link);
 };
 
@@ -118,8 +121,9 @@ struct link_config {
 };
 
 /*
- * libmodbus over TCP and RTU. *ret_link is owned by the caller, closed until
- * link_open(). Errors: ERR_LINK (bad address), ERR_NOMEM.
+ * Modbus TCP, and RTU through libmodbus. *ret_link is owned by the caller,
+ * closed until link_open() (a request on a closed link opens it). Names are
+ * resolved here. Errors: ERR_LINK (bad address), ERR_NOMEM.
  */
 int link_tcp_new(const struct link_config *config, struct link **ret_link, struct err *reterr);
 int link_rtu_new(const struct link_config *config, struct link **ret_link, struct err *reterr);
