@@ -9,8 +9,11 @@
  *   - hold: T
  *   - await: {channel: C, is|above|below|between: ..., for: T, timeout: T}
  *   - silence: {device: D, for: T}        nothing is sent to it; the connection stays open
- *   - attempt: {name: N, write: {C: V} | read: {...} | function: F ..., expect: exception}
+ *   - attempt: {name: N, write: {C: V}, expect: illegal_data_value}
+ *   - attempt: {name: N, device: D, read_input_register: A, count: N, expect: illegal_data_address}
+ *   - attempt: {name: N, device: D, function: F, expect: illegal_function}
  *   - cycle: {times: N, steps: [...]}
+ *     expect: the name of a Modbus exception (Application Protocol V1.1b3, section 7), or any
  *   - mark: {name: M, when: {channel: ..., above: ...}}   (no step of its own: watches)
  * Every step may carry `mark: NAME`. On a set it is the instant of the command
  * ([request sent + earliest effect, reply received + latest effect], over all
@@ -67,11 +70,6 @@ struct step {
 };
 
 struct rig;
-/*
- * Binds a list of steps. marks: where new mark names are entered, or NULL
- * where marks are not allowed (safe state). allowed: a bit per step_kind.
- * Faults: unknown channels, values that do not fit unit, coding or `between`.
- */
 struct mark_names {
 	const char *names[64];
 	size_t count;
@@ -85,29 +83,53 @@ struct step_context {
 	const struct rig *rig;
 	struct arena *arena;
 	struct faults *faults;
-	struct mark_names *marks;
-	unsigned allowed; /* 1u << STEP_SET | ... */
+	struct mark_names *marks; /* where new names are entered; NULL: no marks here */
+	unsigned allowed;         /* 1u << STEP_SET | ... */
+	/* A test that goes on from another, or `restore`: what is commanded at its begin is not known.
+	 * Otherwise a list begins with what the rig's safe state commands; `slew` is judged from it. */
+	bool continues;
 	/* Gives the node to read instead of one that says $name (with its own position), or NULL
 	 * after adding a fault. */
 	const struct yaml_node *(*substitute)(void *context, const struct yaml_node *node);
 	void *substitute_context;
 };
 
+/*
+ * Binds a list of steps. Faults: unknown channels, values that do not fit
+ * unit, coding or `between`, changes faster than `slew`, a hold of zero, an
+ * await without timeout, a silence that nobody watches, an attempt that the
+ * rig does not allow. Errors: ERR_NOMEM only.
+ */
 int steps_load(const struct step_context *context, const struct yaml_node *list,
                struct step **ret_steps, size_t *ret_count, struct err *reterr);
 /*
- * Binds {channel, is|above|below|between, for} (other keys in `also` are
- * skipped). Faults are added; then ret->channel is -1.
+ * Binds {channel, is|above|below|between, for}. Faults are added; then
+ * ret->channel is -1. also: NULL, or a table whose keys stand in the same
+ * mapping; then the caller binds it with bind_mapping_beside(), condition_fields()
+ * beside it, and so finds the unknown keys.
  */
 void condition_load(const struct step_context *context, const struct yaml_node *mapping,
                     const struct field_table *also, struct condition *ret);
+/* The fields of a condition. */
+const struct field_table *condition_fields(void);
+/* The channel that a scalar names, or -1 after adding a fault. */
+int channel_load(const struct step_context *context, const struct yaml_node *node);
 /* A value in the unit of a channel: "1500 rpm", 1500, or one of the channel's names. */
 bool channel_value_load(const struct step_context *context, const struct yaml_node *node,
                         int channel, double *ret_value);
 
 /* "set speed_command = 1500 rpm", for progress and reports; in buffer. */
 const char *step_text(const struct step *step, const struct rig *rig, char *buffer, size_t size);
-/* Shortest and longest time that a list of steps can take. */
+/* "bench_speed between -10 rpm and 10 rpm for 100 ms"; in buffer. */
+const char *condition_text(const struct condition *condition, const struct rig *rig, char *buffer,
+                           size_t size);
+/* "1500 rpm", "link_watchdog", "1": a value of a channel as a file would say it; in buffer. */
+const char *channel_value_text(const struct rig *rig, int channel, double value, char *buffer,
+                               size_t size);
+/*
+ * Shortest and longest time that a list of steps can take, in ns; the
+ * transactions of set and attempt are not counted.
+ */
 void steps_duration(const struct step *steps, size_t count, int64_t *ret_least, int64_t *ret_most);
 
 #endif
