@@ -37,6 +37,9 @@ struct recorded_test {
 	size_t mark_count;
 	struct outcome *outcomes;
 	size_t outcome_count;
+	struct command
+	    *commands; /* assignments of the stimulus, in the order in which they were made */
+	size_t command_count;
 	size_t missed_slots; /* polls that were due and not made */
 	size_t lost_replies; /* requests without a good reply */
 };
