@@ -79,16 +79,15 @@ static void open_writers(struct capture *capture, const struct journal_event *be
 		event.kind = JOURNAL_BLOCK;
 		event.number = i;
 		event.device = block->device;
-		size_t length = 0;
-		for (size_t c = 0; c < block->channel_count; c++) {
+		for (size_t c = 0; c < block->channel_count; c++)
 			names[c] = capture->rig->infos[block->channels[c]].name;
-			if (length + strlen(names[c]) + 2 < sizeof event.text)
-				length += (size_t)snprintf(event.text + length, sizeof event.text - length, "%s%s",
-				                           c ? " " : "", names[c]);
-		}
 		check(capture, samples_writer_new(capture->folder, test, i, names, block->channel_count,
 		                                  &capture->writers[i], &capture->err));
 		capture->writer_count = i + 1;
+		if (capture->failed)
+			break;
+		(void)snprintf(event.name, sizeof event.name, "%s",
+		               samples_writer_name(capture->writers[i]));
 		write_event(capture, &event);
 	}
 }

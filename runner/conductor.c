@@ -284,6 +284,7 @@ static void precondition_failed(struct conductor *conductor, const struct precon
 	const struct channel_info *info = &conductor->rig->infos[before->condition.channel];
 	struct journal_event event = conductor_event(conductor, JOURNAL_PRECONDITION, now_ns);
 	event.channel = before->condition.channel;
+	event.condition = &before->condition;
 	event.line = before->at.line;
 	event.earliest_ns = conductor->before_begin_ns;
 	event.latest_ns = now_ns;
@@ -576,6 +577,15 @@ bool conductor_ended(struct conductor *conductor)
 	bool ended = conductor->ended;
 	(void)pthread_mutex_unlock(&conductor->mutex);
 	return ended;
+}
+
+bool conductor_woken(struct conductor *conductor)
+{
+	(void)pthread_mutex_lock(&conductor->mutex);
+	bool woken = conductor->woken;
+	conductor->woken = false;
+	(void)pthread_mutex_unlock(&conductor->mutex);
+	return woken;
 }
 
 void conductor_wake(struct conductor *conductor)

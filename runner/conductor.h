@@ -37,6 +37,8 @@ int64_t conductor_tick(struct conductor *conductor, int64_t now_ns);
 /* The thread's body: ticks until the run has ended. */
 void conductor_loop(struct conductor *conductor);
 bool conductor_ended(struct conductor *conductor);
+/* Whether something woke it since it was last asked; for the loop in virtual time. */
+bool conductor_woken(struct conductor *conductor);
 /* Wakes the conductor's thread (after stop_raise). Any thread. */
 void conductor_wake(struct conductor *conductor);
 

@@ -34,7 +34,9 @@ static void tell_command(struct conductor *conductor, const struct command_op *o
 	event.value = op->value;
 	event.earliest_ns = op->sent_ns + channel->effect_least_ns;
 	event.latest_ns = op->received_ns + channel->effect_most_ns;
-	event.status = progress == PROGRESS_DONE ? 0 : 1;
+	event.status = progress == PROGRESS_DONE ? LINK_OK
+	               : op->exception           ? LINK_EXCEPTION
+	                                         : LINK_TIMEOUT;
 	event.number = op->exception;
 	if (progress != PROGRESS_DONE)
 		(void)snprintf(event.text, sizeof event.text, "%s", op->why);
@@ -232,6 +234,7 @@ static void tell_expired(struct conductor *conductor, const struct walk *walk, i
 {
 	struct journal_event event = conductor_event(conductor, JOURNAL_AWAIT_EXPIRED, now_ns);
 	event.channel = walk->step->condition.channel;
+	event.condition = &walk->step->condition;
 	event.line = walk->step->at.line;
 	event.earliest_ns = walk->begin_ns;
 	event.latest_ns = now_ns;

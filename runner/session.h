@@ -1,0 +1,112 @@
+/* SPDX-License-Identifier: Apache-2.0 */
+#ifndef DRIVETRIAL_SESSION_H
+#define DRIVETRIAL_SESSION_H
+/*
+ * One run from the command line to the reports: what `run` and `rehearse`
+ * share. The two differ in links and clock only: libmodbus and
+ * CLOCK_MONOTONIC, or the modelled bench and a number.
+ *
+ *   session_load      files, selection, demands of an unattended run
+ *   session_connect   links, identity; nothing is commanded
+ *   session_record    lock, run folder, journal
+ *   engine_real / engine_virtual   the run itself, until rest
+ *   session_finish    verdicts, reports, SHA256SUMS, summary; the exit code
+ */
+#include <time.h>
+
+#include "capture.h"
+#include "served.h"
+
+enum { SUITES_MOST = 16, OVERRIDES_MOST = 64, SELECT_MOST = 64 };
+
+enum exit_code {
+	EXIT_ALL_PASS = 0,
+	EXIT_TEST_FAILED = 1,
+	EXIT_UNDECIDED = 2,
+	EXIT_ABORTED = 3,
+	EXIT_NOT_AT_REST = 4,
+	EXIT_USAGE = 64,
+	EXIT_FILE = 65,
+	EXIT_NO_RIG = 69,
+	EXIT_INTERNAL = 70,
+	EXIT_NO_OUTPUT = 73,
+	EXIT_IN_USE = 75,
+};
+
+struct link_address { /* --link LINK=ADDRESS */
+	const char *link, *address;
+};
+
+struct run_options {
+	bool rehearse;
+	const char *rig_path;
+	const char *suite_paths[SUITES_MOST];
+	size_t suite_count;
+	const char *out;
+	struct override overrides[OVERRIDES_MOST];
+	size_t override_count;
+	const char *only[SELECT_MOST], *tags[SELECT_MOST];
+	size_t only_count, tag_count;
+	int part, parts;
+	struct link_address addresses[16];
+	size_t address_count;
+	uint64_t seed;
+	const char *defect;
+	bool quiet, verbose, yes;
+};
+
+struct session {
+	const struct run_options *options;
+	struct arena arena;
+	const struct rig *rig;
+	struct suite *suites[SUITES_MOST];
+	size_t suite_count;
+	struct faults faults;
+	/* time */
+	struct virtual_clock virtual_clock;
+	struct clock base, clock; /* clock: ns since the start of the run */
+	int64_t origin_ns;
+	/* the bench */
+	struct served *served; /* rehearse */
+	struct link **links;
+	struct stop stop;
+	struct conductor *conductor;
+	struct run_facts facts;
+	int *locks; /* descriptors; 0: not taken */
+	size_t lock_count;
+	/* the record */
+	struct run_folder folder;
+	bool folder_made;
+	struct journal *journal;
+	struct capture capture;
+};
+
+void session_init(struct session *session, const struct run_options *options);
+void session_release(struct session *session);
+/* Each returns 0, or an exit code after a message on stderr. */
+int session_load(struct session *session);
+int session_connect(struct session *session);
+int session_record(struct session *session);
+int session_finish(struct session *session);
+/* Judges one bench test from what was recorded so far; for the gates. */
+void session_answer_gate(struct session *session);
+void session_print_error(const struct err *err);
+/* Prints it and gives the exit code that belongs to it. */
+int session_exit_of(const struct err *err);
+
+/* engine_*.c: drive the conductor until the run has ended. */
+int engine_real(struct session *session);
+int engine_virtual(struct session *session);
+
+/* progress.c */
+struct progress_line {
+	bool terminal, quiet;
+	int suite, test;
+	int64_t shown_ns;
+	bool drawn;
+};
+void progress_init(struct progress_line *line, bool quiet);
+void progress_show(struct progress_line *line, struct session *session, int64_t now_ns);
+void progress_clear(struct progress_line *line);
+
+#endif
