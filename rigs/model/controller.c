@@ -27,6 +27,16 @@ void controller_control(struct controller *controller, int control, int64_t now_
 	controller->control = control;
 }
 
+/* Torque at the current limit, with the best angle. */
+static double most_torque(const struct controller *c)
+{
+	double dl = c->lq_h - c->ld_h, most = c->current_most_a, psi = c->flux_wb;
+	if (dl == 0 || defect_in(c->defects, DEFECT_MTPA_OFF))
+		return torque_of(c, 0, most);
+	double d = (psi - sqrt(psi * psi + 8 * dl * dl * most * most)) / (4 * dl);
+	return torque_of(c, d, sqrt(most * most - d * d));
+}
+
 void controller_start(struct controller *controller, const struct controller_tuning *tuning)
 {
 	struct controller *c = controller;
@@ -34,6 +44,7 @@ void controller_start(struct controller *controller, const struct controller_tun
 		c->offset_elec_rad += 12 * TWO_PI / 360;
 	if (defect_in(c->defects, DEFECT_ENCODER_LINES_WRONG))
 		c->counts_per_turn = c->counts_per_turn * 1000 / 1024;
+	c->weakening_share = defect_in(c->defects, DEFECT_FIELD_WEAKENING_LATE) ? 1.15 : 0.93;
 	c->null_share = defect_in(c->defects, DEFECT_NULL_STATES_UNEQUAL) ? 0 : 0.5;
 	speed_meter_start(&c->meter, c->period_s);
 	current_loops_tune(c, tuning);
@@ -43,7 +54,7 @@ void controller_start(struct controller *controller, const struct controller_tun
 	if (tuning->speed_bandwidth_rad_s > 0)
 		lag = 1 / (2 * tuning->speed_bandwidth_rad_s);
 	speed_loop_tune(&c->speed_loop, tuning->inertia_kgm2, lag, c->period_s, c->defects);
-	c->speed_loop.torque_most_nm = 1.5 * c->pole_pairs * c->flux_wb * c->current_most_a;
+	c->speed_loop.torque_most_nm = most_torque(c);
 	c->duty[0] = c->duty[1] = c->duty[2] = 0.5;
 	faults_start(c);
 }
@@ -92,7 +103,7 @@ static double torque_command(struct controller *c, int64_t now_ns)
 	double gain_share = 1;
 	if (defect_in(c->defects, DEFECT_GAIN_SCHEDULED_WRONG) &&
 	    fabs(c->speed_rad_s) > 0.4 * c->rated_speed_rad_s)
-		gain_share = 0.125;
+		gain_share = 0.0625;
 	return speed_loop_step(&c->speed_loop, c->speed_command_rad_s, c->speed_rad_s, gain_share);
 }
 

@@ -7,6 +7,9 @@
  * periods (one of computing, half of the held voltage). Where the voltage
  * vector is limited, the integrals take only the part of the error that the
  * limited vector can serve (back-calculation); the d axis keeps its voltage.
+ *
+ * Current commands: maximum torque per ampere where the machine has saliency,
+ * id = 0 where it has none, and field weakening on top of either.
  */
 #include "model_controller.h"
 
@@ -15,6 +18,8 @@
 #include "model_modulation.h"
 
 #define INV_SQRT3 0.57735026918962576451
+/* How fast the d current follows a voltage that is too high: a decade below the current loops. */
+#define WEAKENING_RAD_S 150.0
 
 void current_loops_tune(struct controller *controller, const struct controller_tuning *tuning)
 {
@@ -28,14 +33,63 @@ void current_loops_tune(struct controller *controller, const struct controller_t
 	loops->integral_share_q = controller->period_s * tuning->resistance_ohm / controller->lq_h;
 }
 
+double torque_of(const struct controller *c, double current_d_a, double current_q_a)
+{
+	return 1.5 * c->pole_pairs * (c->flux_wb + (c->ld_h - c->lq_h) * current_d_a) * current_q_a;
+}
+
+/*
+ * Maximum torque per ampere (Morimoto et al., IEEE Trans. IA 1990):
+ *   id = psi/(2 dL) - sqrt(psi^2/(4 dL^2) + iq^2),  dL = Lq - Ld,
+ * so T(iq) = 1.5 p iq (psi/2 + sqrt(psi^2/4 + dL^2 iq^2)), solved for iq by Newton
+ * from the last answer; the function is convex and rising, so three steps do.
+ */
+void current_for_torque(const struct controller *controller, double torque_nm, double *io_q,
+                        double *ret_d)
+{
+	double dl = controller->lq_h - controller->ld_h, half = 0.5 * controller->flux_wb;
+	double wanted = fabs(torque_nm) / (1.5 * controller->pole_pairs);
+	double q = fabs(*io_q);
+	for (int i = 0; i < 3; i++) {
+		double root = sqrt(half * half + dl * dl * q * q);
+		q -= (q * (half + root) - wanted) / (half + root + dl * dl * q * q / root);
+	}
+	*io_q = copysign(q, torque_nm);
+	*ret_d = (half - sqrt(half * half + dl * dl * q * q)) / dl;
+}
+
+/*
+ * Field weakening: an integral control takes the d current down while the
+ * voltage wanted by the current loops lies above a target below the limit.
+ */
+static double field_weakening(struct controller *c)
+{
+	double target = c->weakening_share * c->dc_v * INV_SQRT3;
+	double flux_speed = fabs(c->pole_pairs * c->speed_rad_s) * c->ld_h;
+	double least = 0.2 * c->pole_pairs * c->rated_speed_rad_s * c->ld_h;
+	double rate = WEAKENING_RAD_S / (flux_speed > least ? flux_speed : least);
+	double d = c->weakening_d_a + c->period_s * rate * (target - c->wanted_v);
+	double most = 0.9 * c->current_most_a;
+	c->weakening_d_a = d > 0 ? 0 : d < -most ? -most : d;
+	return c->weakening_d_a;
+}
+
 void current_commands(struct controller *controller, double torque_nm)
 {
 	struct controller *c = controller;
 	double d = c->magnetising_a;
+	if (c->ld_h != c->lq_h && !defect_in(c->defects, DEFECT_MTPA_OFF)) {
+		double best;
+		current_for_torque(c, torque_nm, &c->torque_q_a, &best);
+		d += best;
+	}
+	d += field_weakening(c);
+	double most_d = 0.95 * c->current_most_a;
+	d = d < -most_d ? -most_d : d;
 	double q = torque_nm / (1.5 * c->pole_pairs * (c->flux_wb + (c->ld_h - c->lq_h) * d));
-	double most = sqrt(c->current_most_a * c->current_most_a - d * d);
+	double most_q = sqrt(c->current_most_a * c->current_most_a - d * d);
 	c->current_d_command_a = d;
-	c->current_q_command_a = q > most ? most : q < -most ? -most : q;
+	c->current_q_command_a = q > most_q ? most_q : q < -most_q ? -most_q : q;
 }
 
 static void turn_and_modulate(struct controller *c, double speed_elec)
@@ -71,6 +125,7 @@ void current_loops_step(struct controller *controller)
 
 	loops->integral_d += loops->integral_share_d * (p_d + d - wanted_d);
 	loops->integral_q += loops->integral_share_q * (p_q + q - wanted_q);
+	c->wanted_v = sqrt(wanted_d * wanted_d + wanted_q * wanted_q);
 	c->voltage_d_v = d;
 	c->voltage_q_v = q;
 	turn_and_modulate(c, speed_elec);

@@ -39,6 +39,8 @@ static int fill_from_nameplate(struct model_config *c, struct err *reterr)
 		               "load_inertia is a part of inertia and must be smaller than it");
 	if (c->current_limit_a == 0)
 		c->current_limit_a = 1.6 * c->rated_current_a;
+	if (c->speed_limit_rad_s == 0)
+		c->speed_limit_rad_s = 1.1 * c->rated_speed_rad_s;
 	if (c->overcurrent_a == 0)
 		c->overcurrent_a = 3 * c->rated_current_a;
 	if (c->overvoltage_v == 0)
@@ -126,7 +128,7 @@ static void init_controller(struct model *model)
 	controller->overtemperature_c = c->overtemperature_c;
 	controller->rated_speed_rad_s = c->rated_speed_rad_s;
 	/* The allowance keeps a limit written in rpm from being refused for its rounding. */
-	controller->speed_most_rad_s = 1.1 * c->rated_speed_rad_s * (1 + 1e-9);
+	controller->speed_most_rad_s = c->speed_limit_rad_s * (1 + 1e-9);
 	if (defect_in(c->defects, DEFECT_MAGNETISING_CURRENT))
 		controller->magnetising_a = -0.3 * c->rated_current_a;
 	controller->started_ns = -NS_PER_S;
@@ -143,8 +145,8 @@ static void init_load(struct model *model)
 {
 	struct load_machine *load = &model->load;
 	load->lag_share = -expm1(-model->step_s / 2e-3);
-	load->fade_from_rad_s = 1.05 * model->config.rated_speed_rad_s;
-	load->fade_to_rad_s = 1.15 * model->config.rated_speed_rad_s;
+	load->fade_from_rad_s = 0.96 * model->config.speed_limit_rad_s;
+	load->fade_to_rad_s = 1.05 * model->config.speed_limit_rad_s;
 }
 
 static void renew_image(struct model *model)

@@ -57,7 +57,7 @@ struct model_config {
 	double thermal_resistance_kw, thermal_capacitance_jk;
 	double control_period_s, switching_period_s, integration_step_s, dead_time_s;
 	double speed_bandwidth_rad_s, current_bandwidth_rad_s; /* 0: tuned from the nameplate */
-	double current_limit_a, overcurrent_a, overvoltage_v, overtemperature_c;
+	double speed_limit_rad_s, current_limit_a, overcurrent_a, overvoltage_v, overtemperature_c;
 	double refresh_s;     /* of the controller's register image */
 	double relay_delay_s; /* of the fault box, largest; each is drawn in [0, it] */
 	double current_noise_a, torque_noise_nm, speed_noise_rad_s;

@@ -73,6 +73,7 @@ struct speed_loop {
 	double gain, integral_share; /* N m per rad/s; share of it that a period adds */
 	double prefilter_share;
 	double torque_most_nm;
+	double windup_share;  /* how far the integral may wind up at the limit; 0 in a healthy one */
 	double command_rad_s; /* behind the prefilter */
 	double integral_nm;
 };
@@ -93,6 +94,7 @@ struct controller {
 	double rated_speed_rad_s, speed_most_rad_s;
 	double offset_elec_rad; /* of the encoder; what is stored, not what is true */
 	double null_share;
+	double weakening_share; /* of the linear voltage limit, above which the field is weakened */
 	struct speed_loop speed_loop;
 	struct current_loops current_loops;
 
@@ -118,6 +120,8 @@ struct controller {
 	/* commanded */
 	bool pulses_on;
 	double current_d_command_a, current_q_command_a;
+	double torque_q_a;              /* last answer of maximum torque per ampere */
+	double weakening_d_a, wanted_v; /* field weakening; voltage wanted before its limit */
 	double voltage_d_v, voltage_q_v, voltage_alpha_v, voltage_beta_v;
 	double duty[3];
 };
@@ -145,6 +149,10 @@ double speed_loop_step(struct speed_loop *loop, double command_rad_s, double spe
 
 /* current_loop.c: from current commands to duties. */
 void current_loops_tune(struct controller *controller, const struct controller_tuning *tuning);
+double torque_of(const struct controller *controller, double current_d_a, double current_q_a);
+/* io_q: a first guess, then the answer. Only for machines with saliency. */
+void current_for_torque(const struct controller *controller, double torque_nm, double *io_q,
+                        double *ret_d);
 void current_commands(struct controller *controller, double torque_nm);
 void current_loops_step(struct controller *controller);
 

@@ -9,13 +9,13 @@
 /* clang-format off */
 /* tuning */
 DEFECT(OVERSHOOT, "overshoot", "step_response",
-       "the speed loop is too lively: its integral time is far too short")
+       "the speed loop is too lively: its integral winds up beyond the torque limit")
 DEFECT(SLUGGISH, "sluggish", "step_response",
        "the speed loop is slow: a fifteenth of its bandwidth")
 DEFECT(INTEGRATOR_MISSING, "integrator-missing", "step_response",
        "the speed loop has no integral part: load leaves a lasting error")
 DEFECT(GAIN_SCHEDULED_WRONG, "gain-scheduled-wrong", "step_response",
-       "above 40 % of rated speed the speed loop's gain falls to an eighth")
+       "above 40 % of rated speed the speed loop's gain falls to a sixteenth")
 /* angle */
 DEFECT(ENCODER_OFFSET, "encoder-offset", "alignment",
        "the encoder offset is wrong by 12 deg electrical; the controller cannot see it")
@@ -25,6 +25,10 @@ DEFECT(DIRECTION_SWAPPED, "direction-swapped", "bench/direction",
        "two motor phases and the encoder's tracks are swapped: everything turns the other way")
 DEFECT(MAGNETISING_CURRENT, "magnetising-current", "torque_angle",
        "the d current is commanded to -30 % of the rated current instead of zero")
+DEFECT(MTPA_OFF, "mtpa-off", "torque_angle",
+       "a machine with saliency is run with no d current: less torque per ampere")
+DEFECT(FIELD_WEAKENING_LATE, "field-weakening-late", "torque_angle",
+       "the field is weakened only beyond the voltage limit, when there is nothing left to control")
 DEFECT(INDEX_DRIFTING, "index-drifting", "alignment",
        "the angle is not set at the index but shifted by one count each turn")
 DEFECT(SINE_ERROR, "sine-error", "alignment",

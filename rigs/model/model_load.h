@@ -9,7 +9,8 @@
  *  - it may brake at any time, but it drives only while the pulse-enable line
  *    from the controller under test, a wire and no bus, is there. Without it
  *    its torque fades to nothing below 2 rad/s, so it brakes to rest and lets go;
- *  - above 1.05 times the rated speed its driving torque fades, at 1.15 times it is gone.
+ *  - above 0.96 times the speed limit of the drive under test its driving torque fades, at 1.05
+ *    times it is gone.
  * A fault, or enable taken away, takes its torque off through the same lag.
  */
 #include <stdbool.h>

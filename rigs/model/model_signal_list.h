@@ -45,7 +45,7 @@ SHOWN("controller.duty_c", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.dut
 TEXT("controller.firmware", firmware, "version")
 TEXT("controller.serial_number", serial_number, "serial number")
 WRITTEN("controller.speed_command", WRITE_SPEED, MODEL_CONTROLLER, DIM_SPEED_MECH, -1e5, 1e5, HOLDS_DOUBLE,
-        controller.speed_command_rad_s, "refused beyond 1.1 times the rated speed")
+        controller.speed_command_rad_s, "refused beyond the parameter speed_limit")
 WRITTEN("controller.control", WRITE_CONTROL, MODEL_CONTROLLER, DIM_NUMBER, 0, 3, HOLDS_INT, controller.control,
         "bit 0 enable, bit 1 reset")
 WRITTEN("controller.watchdog_time", WRITE_WATCHDOG, MODEL_CONTROLLER, DIM_TIME, 0, 10, HOLDS_NS, controller.watchdog_ns,

@@ -57,6 +57,8 @@ static const struct field FIELDS[] = {
 	         "of the current loops, 1/(2 T) in the magnitude optimum; 0: by the control period"),
 	QUANTITY("current_limit", DIM_CURRENT_AMPLITUDE, 0, 1e4, "0 A_peak", current_limit_a,
 	         "of the controller; 0: 1.6 times the rated current"),
+	QUANTITY("speed_limit", DIM_SPEED_MECH, 0, 1e5, "0 rpm", speed_limit_rad_s,
+	         "largest speed command that the controller takes; 0: 1.1 times the rated speed"),
 	QUANTITY("overcurrent", DIM_CURRENT_AMPLITUDE, 0, 1e4, "0 A_peak", overcurrent_a,
 	         "a phase current above it trips; 0: 3 times the rated current"),
 	QUANTITY("overvoltage", DIM_VOLTAGE, 0, 4000, "0 V", overvoltage_v,

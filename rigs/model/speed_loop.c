@@ -21,6 +21,8 @@
 #include <math.h>
 
 #define TWO_PI 6.28318530717958647692
+/* How far the defect overshoot lets the integral wind up, in torque limits. */
+#define WINDUP 6
 
 void speed_meter_start(struct speed_meter *meter, double period_s)
 {
@@ -61,9 +63,8 @@ void speed_loop_tune(struct speed_loop *loop, double inertia_kgm2, double lag_s,
 	double integral_s = 4 * lag_s;
 	loop->gain = inertia_kgm2 / (2 * lag_s);
 	loop->prefilter_share = -expm1(-period_s / integral_s);
-	if (defect_in(defects, DEFECT_OVERSHOOT))
-		integral_s /= 8;
 	loop->integral_share = period_s / integral_s;
+	loop->windup_share = defect_in(defects, DEFECT_OVERSHOOT) ? WINDUP : 0;
 	if (defect_in(defects, DEFECT_INTEGRATOR_MISSING))
 		loop->integral_share = 0;
 }
@@ -77,7 +78,7 @@ double speed_loop_step(struct speed_loop *loop, double command_rad_s, double spe
 	double most = loop->torque_most_nm;
 	bool pushes_further =
 	    (torque > most && proportional > 0) || (torque < -most && proportional < 0);
-	if (!pushes_further)
+	if (!pushes_further || fabs(loop->integral_nm) < loop->windup_share * most)
 		loop->integral_nm += loop->integral_share * proportional;
 	return torque > most ? most : torque < -most ? -most : torque;
 }

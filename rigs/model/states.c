@@ -54,6 +54,7 @@ static void enter_running(struct controller *c, const struct sensed *sensed)
 	c->counts = sensed->encoder->counter;
 	c->current_loops.integral_d = c->current_loops.integral_q = 0;
 	c->speed_loop.integral_nm = 0;
+	c->torque_q_a = c->weakening_d_a = c->wanted_v = 0;
 	c->speed_loop.command_rad_s = c->speed_rad_s;
 	c->pulses_on = true;
 }
