@@ -42,6 +42,20 @@ static int hash_file(int folder, const char *name, char hex[SHA256_HEX_SIZE])
 	return rc;
 }
 
+int run_folder_hash(const char *path, const char *name, char *hex, size_t size, struct err *reterr)
+{
+	char own[SHA256_HEX_SIZE];
+	int folder = open(path, O_RDONLY | O_DIRECTORY | O_CLOEXEC);
+	int rc = folder < 0 ? -1 : hash_file(folder, name, own);
+	int cause = errno;
+	if (folder >= 0)
+		(void)close(folder);
+	if (rc < 0)
+		return err_set(reterr, ERR_FILE, "%s/%s: %s", path, name, strerror(cause));
+	(void)snprintf(hex, size, "%s", own);
+	return 0;
+}
+
 static void list_release(struct name_list *list)
 {
 	for (size_t i = 0; i < list->count; i++)

@@ -95,7 +95,7 @@ static bool has_faults(const struct session *session)
 }
 
 /* The bench is proven once a run, by the first suite. */
-static void drop_bench_tests(struct suite *suite)
+void session_drop_bench_tests(struct suite *suite)
 {
 	while (suite->test_count > 0 && suite->tests[0].bench) {
 		suite->tests++;
@@ -123,7 +123,7 @@ static int load_files(struct session *session, struct err *err)
 		if (!suite)
 			continue;
 		if (session->suite_count > 0)
-			drop_bench_tests(suite);
+			session_drop_bench_tests(suite);
 		session->suites[session->suite_count++] = suite;
 	}
 	return 0;

@@ -88,6 +88,8 @@ int session_load(struct session *session);
 int session_connect(struct session *session);
 int session_record(struct session *session);
 int session_finish(struct session *session);
+/* The bench is proven once a run, by the first suite: the others lose their bench tests. */
+void session_drop_bench_tests(struct suite *suite);
 /* Judges one bench test from what was recorded so far; for the gates. */
 void session_answer_gate(struct session *session);
 void session_print_error(const struct err *err);
