@@ -20,7 +20,6 @@
 #include <jansson.h>
 
 #include "folder.h"
-#include "link.h"
 
 enum journal_keys {
 	KEY_TEST = 1, /* with its suite */
@@ -41,8 +40,7 @@ struct journal_row {
 	const char *const *status_words;                      /* NULL: yes or no */
 };
 
-static const char *const LINK_WORDS[] = {"ok",   "exception", "timeout", "garbled",
-                                         "lost", "stopped",   NULL};
+static const char *const COMMAND_WORDS[] = {"done", "failed", NULL};
 static const char *const OUTCOME_WORDS[] = {"accepted", "exception", "no_reply", "not_made", NULL};
 static const char *const END_WORDS[] = {"not_started",  "completed", "await_expired",
                                         "precondition", "aborted",   NULL};
@@ -59,8 +57,10 @@ static const struct journal_row ROWS[JOURNAL_KINDS] = {
     [JOURNAL_STEP] = {.word = "step", .keys = KEY_TEST | KEY_LINE, .text = "text"},
     [JOURNAL_COMMAND] = {.word = "command",
                          .keys = KEY_TEST | KEY_CHANNEL | KEY_VALUE | KEY_INTERVAL,
-                         .status = "reply",
-                         .status_words = LINK_WORDS},
+                         .number = "exception",
+                         .text = "reason",
+                         .status = "end",
+                         .status_words = COMMAND_WORDS},
     [JOURNAL_MARK] = {.word = "mark", .keys = KEY_TEST | KEY_INTERVAL, .name = "mark"},
     [JOURNAL_ATTEMPT] = {.word = "attempt",
                          .keys = KEY_TEST | KEY_INTERVAL,
@@ -70,8 +70,8 @@ static const struct journal_row ROWS[JOURNAL_KINDS] = {
                          .status = "outcome",
                          .status_words = OUTCOME_WORDS},
     [JOURNAL_AWAIT_EXPIRED] = {.word = "await_expired",
-                               .keys =
-                                   KEY_TEST | KEY_CHANNEL | KEY_LINE | KEY_INTERVAL | KEY_CONDITION,
+                               .keys = KEY_TEST | KEY_CHANNEL | KEY_VALUE | KEY_LINE |
+                                       KEY_INTERVAL | KEY_CONDITION,
                                .text = "text"},
     [JOURNAL_PRECONDITION] = {.word = "precondition",
                               .keys =
@@ -91,7 +91,7 @@ static const struct journal_row ROWS[JOURNAL_KINDS] = {
                            .text = "text"},
     [JOURNAL_ABORT] = {.word = "abort", .text = "reason"},
     [JOURNAL_REST_BEGIN] = {.word = "rest_begin"},
-    [JOURNAL_REST] = {.word = "rest", .text = "text", .status = "confirmed"},
+    [JOURNAL_REST] = {.word = "rest", .text = "text", .expected = "last", .status = "confirmed"},
     [JOURNAL_LINK_COUNTS] = {.word = "link_counts", .keys = KEY_LINK | KEY_COUNTS},
     [JOURNAL_HEARTBEAT] = {.word = "heartbeat", .number = "rows"},
     [JOURNAL_RUN_END] = {.word = "run_end", .text = "realtime"},

@@ -31,7 +31,9 @@ enum journal_kind {
 	JOURNAL_BLOCK,         /* test, number (block), name: samples_writer_name() */
 	JOURNAL_STIMULUS,      /* test: the stimulus begins */
 	JOURNAL_STEP,          /* test, text, line */
-	JOURNAL_COMMAND, /* channel, value, earliest, latest, status (enum link_status); test or -1 */
+	/* channel, value, earliest, latest, status (0: in effect), number (exception), text: why not;
+	 * test or -1 */
+	JOURNAL_COMMAND,
 	JOURNAL_MARK,    /* test, name, earliest, latest */
 	JOURNAL_ATTEMPT, /* test, name, status (enum outcome_status), number (exception), expected,
 	                    earliest, latest */
@@ -44,7 +46,7 @@ enum journal_kind {
 	JOURNAL_INTERLOCK,     /* text, channel, value, earliest, latest */
 	JOURNAL_ABORT,         /* text: the reason */
 	JOURNAL_REST_BEGIN,
-	JOURNAL_REST,        /* status 1: confirmed, 0: not; text: how or why not */
+	JOURNAL_REST, /* status 1: confirmed, 0: not; text: how or why not; expected 1: the last */
 	JOURNAL_LINK_COUNTS, /* link, counts[5] */
 	JOURNAL_HEARTBEAT,   /* number: rows written so far */
 	JOURNAL_RUN_END,     /* text: what was obtained of the scheduler */

@@ -56,8 +56,7 @@ struct folder_changes {
 int run_folder_compare(const char *path, struct text *out, struct folder_changes *ret_changes,
                        struct err *reterr);
 /* SHA-256 of one file of a folder, in hexadecimal (64 characters and a NUL). Errors: ERR_FILE. */
-int run_folder_hash(const char *path, const char *name, char *hex, size_t size,
-                    struct err *reterr);
+int run_folder_hash(const char *path, const char *name, char *hex, size_t size, struct err *reterr);
 /* A name made safe for files: characters outside [A-Za-z0-9._-] become '_', at most 100. */
 void file_name_clean(const char *name, char *buffer, size_t size);
 
