@@ -19,7 +19,7 @@
 #define EVERY_NS          (5 * NS_PER_MS)
 #define TRIPPED_HOLD_NS   (200 * NS_PER_MS) /* the trip is looked at for so long */
 #define CLEARED_NS        (2 * NS_PER_S)    /* a cleared watchdog shows within it */
-#define DIRECTION_HOLD_NS (1200 * NS_PER_MS)
+#define DIRECTION_HOLD_NS (900 * NS_PER_MS)
 
 struct bench {
 	const struct rig *rig;
@@ -286,7 +286,7 @@ static int direction_test(struct bench *b, size_t index)
 	                              "- same_sign:\n"
 	                              "    command: %s\n"
 	                              "    channels: [%s]\n"
-	                              "    window: {from: commanded, after: 600 ms, for: 500 ms}\n"
+	                              "    window: {from: commanded, after: 400 ms, for: 450 ms}\n"
 	                              "    limits: {agree: {is: yes}}\n",
 	                              command, agree));
 }
