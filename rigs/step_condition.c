@@ -138,7 +138,8 @@ static bool coding_holds(const struct step_context *context, int channel, double
 		return false;
 	}
 	double step = codec_resolution(&c->codec);
-	double steps = step > 0 ? (value - c->codec.zero) / step : 0;
+	double forward = c->codec.reversed ? -value : value;
+	double steps = step > 0 ? (forward - c->codec.zero) / step : 0;
 	if (exact && fabs(steps - round(steps)) > 1e-6) {
 		faults_add(context->faults, at,
 		           "%s can never be exactly %s: it comes in steps of %.6g; use `between`",
