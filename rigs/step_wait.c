@@ -100,7 +100,7 @@ int step_silence_load(struct step_loader *loader, const struct yaml_node *value,
 	ret->device = device ? step_device(loader, device) : -1;
 	if (ret->device < 0)
 		return 0;
-	bool watched;
+	bool watched = false;
 	if (interlock_elsewhere(loader, ret->device, &watched) < 0)
 		return -1;
 	if (!watched)
