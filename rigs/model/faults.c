@@ -7,7 +7,7 @@
  *   fault            code  stands for  condition / gone
  *   overcurrent       1    at once     comparator above the limit / below it
  *   overvoltage       2    0.3 ms      DC link above the limit / below 97 % of it
- *   encoder loss      3    2 ms        no differential signal level at the receiver / level back
+ *   encoder loss      3    0.3 ms       no differential signal level at the receiver / level back
  *   overtemperature   4    20 ms       winding sensor above the limit / 5 K below it
  *   link watchdog     9    at once     enabled, and silent for longer than its time / heard again,
  *                                      or enable taken away
@@ -26,7 +26,7 @@ struct watch {
 static const struct watch WATCHES[FAULTS] = {
     [FAULT_OVERCURRENT] = {1, 2, 0, DEFECT_OVERCURRENT_MISSED},
     [FAULT_OVERVOLTAGE] = {2, 1, 300000, DEFECT_OVERVOLTAGE_MISSED},
-    [FAULT_ENCODER_LOSS] = {3, 4, 2000000, DEFECT_ENCODER_LOSS_MISSED},
+    [FAULT_ENCODER_LOSS] = {3, 4, 300000, DEFECT_ENCODER_LOSS_MISSED},
     [FAULT_OVERTEMPERATURE] = {4, 3, 20000000, DEFECT_OVERTEMPERATURE_MISSED},
     [FAULT_LINK_WATCHDOG] = {9, 9, 0, DEFECT_WATCHDOG_MISSING},
 };
