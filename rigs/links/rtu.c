@@ -75,8 +75,11 @@ static int64_t quiet_ns(const struct rtu_link *rtu)
 static void rtu_close(struct link *link)
 {
 	struct rtu_link *rtu = rtu_of(link);
-	if (rtu->is_open)
+	if (rtu->is_open) {
+		/* Else the mark stays while anybody else holds the terminal open. */
+		(void)ioctl(modbus_get_socket(rtu->port), TIOCNXCL);
 		modbus_close(rtu->port); /* ends the flock too */
+	}
 	rtu->is_open = false;
 	rtu->busy = false;
 }
