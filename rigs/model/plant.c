@@ -166,16 +166,16 @@ static void turn_rotor_frame(struct plant *plant)
 	sincos(plant->angle_rad * plant->pole_pairs, &plant->sin_elec, &plant->cos_elec);
 }
 
-/* The back-EMF pushes current through the diodes only above the DC voltage. */
-static bool diodes_hold(const struct plant *plant)
+/* Back-EMF as a share of what the diodes hold off; from 1 on it pushes current through them. */
+static double emf_share(const struct plant *plant)
 {
 	double emf = fabs(plant->speed_rad_s) * plant->pole_pairs * plant->flux_wb;
-	return emf < DIODE_SHARE * plant->dc_v;
+	return emf / (DIODE_SHARE * plant->dc_v);
 }
 
 static void step_off(struct plant *plant, double h)
 {
-	if (plant->blocked && !diodes_hold(plant))
+	if (plant->blocked && emf_share(plant) >= 1)
 		plant->blocked = false;
 	if (plant->blocked) {
 		runge_kutta(plant, h);
@@ -188,8 +188,10 @@ static void step_off(struct plant *plant, double h)
 	for (int i = 0; i < parts; i++)
 		runge_kutta(plant, h / parts);
 	turn_rotor_frame(plant);
-	double current = hypot(plant->current_d_a, plant->current_q_a);
-	if (diodes_hold(plant) && current < DIODE_ZERO_A + 0.3 * DIODE_SMOOTH_A) {
+	/* Where the smoothed diodes would settle, real ones have stopped conducting. */
+	double share = emf_share(plant);
+	double settled = DIODE_ZERO_A + 1.1 * share * DIODE_SMOOTH_A;
+	if (share < 1 && hypot(plant->current_d_a, plant->current_q_a) < settled) {
 		plant->blocked = true;
 		plant->current_d_a = plant->current_q_a = 0;
 	}
