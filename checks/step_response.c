@@ -1,6 +1,17 @@
 /* SPDX-License-Identifier: Apache-2.0 */
-/* Field tables; the evaluation is not there yet and says so. */
+/*
+ * The step response: finds the levels before and after, proves that they are
+ * steady, and hands the rows between to response.c.
+ *
+ * Both levels are measured, for a command says what should be, not what was.
+ * The histogram method of IEEE Std 181 was rejected as the default: it finds
+ * two levels in any record, also where nothing ever settled.
+ */
+#include <stdio.h>
+
 #include "check.h"
+#include "response.h"
+#include "window.h"
 
 struct step_response {
 	int channel, from, command, percent_of;
@@ -30,7 +41,7 @@ static const struct field fields[] = {
     {.key = "initial_for",
      .kind = FIELD_DURATION,
      .flags = FIELD_POSITIVE,
-     .fallback = "50 ms",
+     .fallback = "100 ms",
      .offset = AT(initial_ns),
      .text = "the initial value is the mean of as much before the mark, as far as the stimulus "
              "goes back"},
@@ -135,25 +146,465 @@ static const struct metric_kind metrics[] = {
     {"ripple_rms", METRIC_LEVEL, "standard deviation of the settled part, as sampled", NULL},
 };
 
+enum { FINAL_ROWS_LEAST = 5, INITIAL_ROWS_LEAST = 3 };
+
+struct work {
+	const struct check_input *in;
+	const struct step_response *params;
+	const struct channel_info *channel;
+	struct metric *metrics;
+	struct rows rows;
+	size_t initial_count, final_begin;
+	int64_t origin_ns;
+	const struct mark *mark;
+	struct steadiness initial, final;
+	double final_limit; /* limits of error of the final value */
+	struct budget final_budget, initial_budget;
+	struct response response;
+	char why[224];
+};
+
+static const struct unit *metric_unit(const struct work *work, size_t metric)
+{
+	switch (metrics[metric].shape) {
+	case METRIC_TIME:
+		return unit_find("s", 1);
+	case METRIC_PERCENT:
+		return unit_percent();
+	default:
+		return work->channel->unit;
+	}
+}
+
+static void unknown(struct work *work, size_t metric, const char *why)
+{
+	metric_unknown(&work->metrics[metric], &metrics[metric], metric_unit(work, metric),
+	               work->channel->evidence, "%s", why);
+}
+
+static void all_unknown(struct work *work, const char *why)
+{
+	for (size_t i = 0; i < FIELD_COUNT(metrics); i++)
+		unknown(work, i, why);
+}
+
+static int64_t at_ns(const struct work *work, double t)
+{
+	return work->origin_ns + (int64_t)llround(t * 1e9);
+}
+
+static void put(struct work *work, size_t index, const struct measured *measured)
+{
+	if (!measured->known) {
+		unknown(work, index, measured->why);
+		return;
+	}
+	struct metric *metric = &work->metrics[index];
+	*metric = (struct metric){
+	    .kind = &metrics[index],
+	    .value = measured->value,
+	    .low = measured->low,
+	    .high = measured->high,
+	    .coverage = measured->coverage,
+	    .unit = metric_unit(work, index),
+	    .evidence = work->channel->evidence,
+	};
+	(void)snprintf(metric->note, sizeof metric->note, "%s", measured->why);
+	metric->points[0] = (struct metric_point){
+	    .label = metrics[index].name,
+	    .earliest_ns = at_ns(work, measured->at_low),
+	    .latest_ns = at_ns(work, measured->at_high),
+	    .level = measured->level,
+	};
+	metric->point_count = 1;
+}
+
+static void put_level(struct work *work, size_t index, double value, double low, double high,
+                      double coverage)
+{
+	struct measured measured = {
+	    .known = true,
+	    .value = value,
+	    .low = low,
+	    .high = high,
+	    .coverage = coverage,
+	    .level = work->response.final,
+	};
+	struct stretch rows = work->response.rows;
+	measured.at_low = stretch_time(&rows, work->final_begin);
+	measured.at_high = stretch_time(&rows, rows.count - 1);
+	put(work, index, &measured);
+}
+
+/* The rows before the mark, between, and of the last part. False: too few; work->why says which. */
+static bool split(struct work *work)
+{
+	const struct step_response *params = work->params;
+	const struct rows *rows = &work->rows;
+	size_t count = 0;
+	while (count < rows->count &&
+	       series_latest(&rows->series, rows->first + count) <= work->mark->earliest_ns)
+		count++;
+	work->initial_count = count;
+	double initial_ms = (double)params->initial_ns / 1e6;
+	if (count < INITIAL_ROWS_LEAST) {
+		(void)snprintf(
+		    work->why, sizeof work->why,
+		    "only %zu samples of %s in the stimulus before the mark %s: hold %.4g ms before it",
+		    count, work->channel->name, work->mark->name, initial_ms);
+		return false;
+	}
+	int64_t to = rows->span.to_ns, judged = to - work->mark->latest_ns;
+	int64_t part = params->final_ns > 0 ? params->final_ns : judged / 5;
+	size_t begin = rows->count;
+	while (begin > count && series_earliest(&rows->series, rows->first + begin - 1) >= to - part)
+		begin--;
+	work->final_begin = begin;
+	if (rows->count - begin < FINAL_ROWS_LEAST) {
+		(void)snprintf(work->why, sizeof work->why,
+		               "only %zu samples of %s in the last %.4g ms: sample faster or hold longer",
+		               rows->count - begin, work->channel->name, (double)part / 1e6);
+		return false;
+	}
+	return true;
+}
+
+/* What is known of a mean over a steady stretch. */
+static void mean_budget(const struct work *work, const struct steadiness *steady,
+                        struct budget *ret_budget)
+{
+	*ret_budget = (struct budget){0};
+	double nu = steady->independent - 1;
+	budget_random(ret_budget, steady->noise / sqrt(steady->independent), nu);
+	/* A drift that noise does not explain: the value may go on by as much. */
+	double square = steady->drift * steady->drift - steady->drift_se * steady->drift_se;
+	budget_other(ret_budget, square > 0 ? sqrt(square / 3) : 0);
+	budget_other(ret_budget, rounding_bias(work->channel->resolution, steady->noise) / sqrt(3));
+}
+
+static double rated(const struct work *work)
+{
+	const struct machine *machine = work->in->machine;
+	const struct dimension dimension = work->channel->unit->dimension;
+	double value = NAN;
+	if (dimension_agrees(dimension, DIM_SPEED_MECH))
+		value = machine->rated_speed.value;
+	else if (dimension_agrees(dimension, DIM_TORQUE))
+		value = machine->rated_torque.value;
+	else if (dimension_agrees(dimension, DIM_CURRENT_AMPLITUDE))
+		value = machine->rated_current.value;
+	else if (dimension_agrees(dimension, DIM_VOLTAGE))
+		value = machine->dc_voltage.value;
+	return value / work->channel->unit->scale;
+}
+
+/* Levels, step and noise, from stretches that may still prove unsteady. */
+static bool levels(struct work *work)
+{
+	const struct rows *rows = &work->rows;
+	double resolution = work->channel->resolution;
+	struct stretch before = rows_stretch(rows, 0, work->initial_count, work->origin_ns);
+	struct stretch after = rows_stretch(rows, work->final_begin, rows->count, work->origin_ns);
+	if (!steadiness_of(&before, resolution, &work->initial) ||
+	    !steadiness_of(&after, resolution, &work->final)) {
+		(void)snprintf(work->why, sizeof work->why, "the samples of %s all bear the same time",
+		               work->channel->name);
+		return false;
+	}
+	mean_budget(work, &work->initial, &work->initial_budget);
+	mean_budget(work, &work->final, &work->final_budget);
+	struct response *response = &work->response;
+	double initial_limit = rows_error_limit(rows, 0, work->initial_count);
+	work->final_limit = rows_error_limit(rows, work->final_begin, rows->count);
+	struct budget initial = work->initial_budget, final = work->final_budget;
+	budget_other(&initial, initial_limit / sqrt(3));
+	budget_other(&final, work->final_limit / sqrt(3));
+	double step = work->final.line.mean_y - work->initial.line.mean_y;
+	const struct steadiness *noisier =
+	    work->initial.noise > work->final.noise ? &work->initial : &work->final;
+	double rounding = resolution / sqrt(12);
+	bool rounded = noisier->noise < rounding;
+	*response = (struct response){
+	    .rows = rows_stretch(rows, 0, rows->count, work->origin_ns),
+	    .mark_half = (double)(work->mark->latest_ns - work->mark->earliest_ns) / 2e9,
+	    .direction = step > 0 ? 1 : -1,
+	    .initial = work->initial.line.mean_y,
+	    .initial_u = budget_expanded(&initial) / 2,
+	    .final = work->final.line.mean_y,
+	    .final_u = budget_expanded(&final) / 2,
+	    .noise = rounded ? rounding : noisier->noise,
+	    .nu = rounded ? (double)INFINITY : noisier->independent - 1,
+	    .independent = noisier->independent / (double)noisier->line.n,
+	    .resolution = resolution,
+	    .hundred = work->params->percent_of == OF_RATED ? rated(work) : fabs(step),
+	    .of_step = work->params->percent_of != OF_RATED,
+	    .error_limit = fmax(initial_limit, work->final_limit),
+	    .gap_most = rows_gap_limit(work->in, rows),
+	};
+	if (!(response->hundred >= 0)) {
+		(void)snprintf(work->why, sizeof work->why,
+		               "percent_of: rated, but the machine has no rated value for %s",
+		               work->channel->name);
+		return false;
+	}
+	return true;
+}
+
+/* The commanded value in the channel's unit; false with work->why. */
+static bool commanded(struct work *work, double *ret_value)
+{
+	const struct check_input *in = work->in;
+	const struct command *found = NULL;
+	for (size_t i = 0; i < in->command_count; i++) {
+		const struct command *command = &in->commands[i];
+		if (command->earliest_ns > work->mark->latest_ns)
+			continue;
+		bool at_mark = command->latest_ns >= work->mark->earliest_ns;
+		bool fits = dimension_agrees(in->channels[command->channel].unit->dimension,
+		                             work->channel->unit->dimension);
+		if (work->params->command >= 0 ? command->channel == work->params->command
+		                               : at_mark && fits)
+			found = command;
+	}
+	if (!found) {
+		(void)snprintf(work->why, sizeof work->why,
+		               "no command in the unit of %s is made at the mark %s: say command",
+		               work->channel->name, work->mark->name);
+		return false;
+	}
+	*ret_value =
+	    found->value * in->channels[found->channel].unit->scale / work->channel->unit->scale;
+	return true;
+}
+
+/* Whether the values moved by more than noise and errors explain; else work->why says so. */
+static bool moved(struct work *work)
+{
+	const struct response *response = &work->response;
+	double step = fabs(response->final - response->initial);
+	double doubt = 2 * hypot(response->initial_u, response->final_u);
+	if (step > 3 * doubt && step > 6 * response->noise)
+		return true;
+	(void)snprintf(
+	    work->why, sizeof work->why,
+	    "no step: %s went from %.4g to %.4g %s, and noise and errors leave +-%.2g in doubt",
+	    work->channel->name, response->initial, response->final, work->channel->unit->name,
+	    fmax(doubt, 2 * response->noise));
+	return false;
+}
+
+static bool steady(struct work *work, const struct steadiness *steadiness, const char *which)
+{
+	/* Where nothing moved, the step that was commanded says what matters. */
+	double target, hundred = work->response.hundred;
+	if (work->response.of_step && commanded(work, &target))
+		hundred = fmax(hundred, fabs(target - work->response.initial));
+	double tolerance = work->params->band * hundred;
+	if (steadiness->bound < tolerance / 4)
+		return true;
+	(void)snprintf(work->why, sizeof work->why,
+	               "the %s value of %s is not proven steady: over %.4g ms it may drift by %.3g %s, "
+	               "a quarter of the band (%.3g) would do; hold longer",
+	               which, work->channel->name, steadiness->duration * 1e3, steadiness->bound,
+	               work->channel->unit->name, tolerance / 4);
+	return false;
+}
+
+/* The final value drifts: whether the values also prove that nothing settled. */
+static void unsettled(struct work *work)
+{
+	const struct response *response = &work->response;
+	double last = stretch_time(&response->rows, response->rows.count - 1);
+	double low_y = INFINITY, high_y = -INFINITY;
+	for (size_t i = work->initial_count; i < response->rows.count; i++) {
+		low_y = fmin(low_y, stretch_value(&response->rows, i));
+		high_y = fmax(high_y, stretch_value(&response->rows, i));
+	}
+	/* The step cannot be larger than this, wherever it would have ended. */
+	double largest = fmax(fabs(high_y - response->initial), fabs(low_y - response->initial));
+	double hundred = response->of_step ? largest : response->hundred;
+	double width = 2 * (work->params->band * hundred + response->error_limit);
+	size_t row = response_unsettled(&response->rows, width);
+	if (row == SIZE_MAX || row < work->initial_count)
+		return;
+	double t = stretch_time(&response->rows, row) - response->mark_half -
+	           2 * stretch_time_u(&response->rows, row);
+	bool proven = t > 0.8 * last;
+	struct measured measured = {
+	    .known = true,
+	    .value = proven ? (double)INFINITY : (double)NAN,
+	    .low = fmax(t, 0),
+	    .high = INFINITY,
+	    .coverage = 0.95,
+	    .at_low = stretch_time(&response->rows, row),
+	    .at_high = last,
+	    .level = NAN,
+	};
+	(void)snprintf(measured.why, sizeof measured.why,
+	               "it had not settled by %.4g s after the command; the samples end at %.4g s", t,
+	               last);
+	put(work, SETTLING_TIME, &measured);
+}
+
+static void settled_part(struct work *work)
+{
+	const struct rows *rows = &work->rows;
+	struct stretch stretch = rows_stretch(rows, work->final_begin, rows->count, work->origin_ns);
+	struct summary summary;
+	summarise(&stretch, &summary);
+	double target;
+	if (commanded(work, &target)) {
+		struct budget budget = work->final_budget;
+		budget_other(&budget, work->final_limit / sqrt(3));
+		double error = summary.mean - target, expanded = budget_expanded(&budget);
+		put_level(work, STEADY_STATE_ERROR, error, error - expanded, error + expanded, 0.95);
+	} else {
+		unknown(work, STEADY_STATE_ERROR, work->why);
+	}
+	double spread = summary.largest - summary.least;
+	double doubt = work->channel->resolution + 2 * work->final_limit;
+	put_level(work, RIPPLE, spread, fmax(0, spread - doubt), spread + doubt, 1);
+	struct budget budget = {0};
+	double nu = fmax(summary.independent - 1, 1);
+	budget_random(&budget, summary.sd / sqrt(2 * nu), nu);
+	budget_other(&budget, work->channel->resolution / sqrt(12));
+	budget_other(&budget, work->final_limit / sqrt(3));
+	double expanded = budget_expanded(&budget);
+	put_level(work, RIPPLE_RMS, summary.sd, fmax(0, summary.sd - expanded), summary.sd + expanded,
+	          0.95);
+}
+
+/* Longest time between neighbours of [begin, end) beyond the limit; then work->why says so. */
+static bool gap_in(struct work *work, size_t begin, size_t end)
+{
+	const struct rows *rows = &work->rows;
+	int64_t limit = rows_gap_limit(work->in, rows);
+	for (size_t i = begin + 1; i < end; i++) {
+		int64_t before = series_received(&rows->series, rows->first + i - 1);
+		int64_t gap = series_received(&rows->series, rows->first + i) - before;
+		if (gap > limit) {
+			(void)snprintf(work->why, sizeof work->why,
+			               "no sample of %s for %.3f ms after %.3f ms, where the answer lies",
+			               work->channel->name, (double)gap / 1e6, (double)before / 1e6);
+			return true;
+		}
+	}
+	return false;
+}
+
+static void shape(struct work *work)
+{
+	const struct step_response *params = work->params;
+	struct measured measured[4];
+	response_crossing(&work->response, params->dead_level, &measured[0]);
+	put(work, DEAD_TIME, &measured[0]);
+	response_transition(&work->response, params->rise_from, params->rise_to, &measured[0]);
+	put(work, RISE_TIME, &measured[0]);
+	if (gap_in(work, work->initial_count - 1, work->rows.count)) {
+		static const size_t hidden[] = {PEAK_TIME, OVERSHOOT, UNDERSHOOT, SETTLING_TIME};
+		for (size_t i = 0; i < FIELD_COUNT(hidden); i++)
+			unknown(work, hidden[i], work->why);
+		return;
+	}
+	response_peak(&work->response, &measured[0], &measured[1], &measured[2]);
+	response_settling(&work->response, params->band, &measured[3]);
+	put(work, OVERSHOOT, &measured[0]);
+	put(work, PEAK_TIME, &measured[1]);
+	put(work, UNDERSHOOT, &measured[2]);
+	put(work, SETTLING_TIME, &measured[3]);
+}
+
+static void judge(struct work *work)
+{
+	if (!split(work) || !levels(work)) {
+		all_unknown(work, work->why);
+		return;
+	}
+	if (!steady(work, &work->initial, "initial") || gap_in(work, 0, work->initial_count) ||
+	    gap_in(work, work->final_begin, work->rows.count)) {
+		all_unknown(work, work->why);
+		return;
+	}
+	if (!steady(work, &work->final, "final")) {
+		all_unknown(work, work->why);
+		if (!gap_in(work, work->initial_count - 1, work->rows.count))
+			unsettled(work);
+		return;
+	}
+	if (moved(work))
+		shape(work);
+	else
+		all_unknown(work, work->why);
+	settled_part(work);
+}
+
 static int evaluate(const struct check_input *in, const void *params, struct metric *ret_metrics,
                     size_t *ret_count, struct err *reterr)
 {
-	(void)in;
-	(void)params;
-	(void)reterr;
-	for (size_t i = 0; i < FIELD_COUNT(metrics); i++)
-		metric_unknown(&ret_metrics[i], &metrics[i], NULL, EVIDENCE_INDEPENDENT,
-		               "this check is not evaluated yet");
+	const struct step_response *own = params;
+	struct work work = {
+	    .in = in,
+	    .params = own,
+	    .channel = &in->channels[own->channel],
+	    .metrics = ret_metrics,
+	};
 	*ret_count = FIELD_COUNT(metrics);
+	work.mark = mark_reached(in, own->from, work.why, sizeof work.why);
+	if (!work.mark) {
+		all_unknown(&work, work.why);
+		return 0;
+	}
+	work.origin_ns = work.mark->earliest_ns + (work.mark->latest_ns - work.mark->earliest_ns) / 2;
+	struct window window = {own->from, 0, own->for_ns};
+	struct span span;
+	if (!window_span(in, &window, &span, work.why, sizeof work.why)) {
+		all_unknown(&work, work.why);
+		return 0;
+	}
+	span.from_ns = work.mark->earliest_ns - own->initial_ns;
+	if (span.from_ns < in->begin_ns)
+		span.from_ns = in->begin_ns;
+	if (rows_take(in, own->channel, span, &work.rows, reterr) < 0)
+		return -1;
+	if (work.rows.usable)
+		judge(&work);
+	else
+		all_unknown(&work, work.rows.why);
+	return 0;
+}
+
+static int verify(const void *params, const struct channel_info *channels,
+                  const struct machine *machine, struct err *reterr)
+{
+	const struct step_response *own = params;
+	const struct channel_info *channel = &channels[own->channel];
+	if (channel->wraps > 0)
+		return err_set(reterr, ERR_FILE, "%s wraps around: a step of it has no size",
+		               channel->name);
+	if (!(own->rise_from < own->rise_to))
+		return err_set(reterr, ERR_FILE, "rise_time: from must be below to");
+	if (own->for_ns > 0 && own->final_ns >= own->for_ns)
+		return err_set(reterr, ERR_FILE, "final_for must be shorter than for");
+	struct check_input in = {.machine = machine};
+	struct work work = {.in = &in, .channel = channel};
+	if (own->percent_of == OF_RATED && !(rated(&work) > 0))
+		return err_set(reterr, ERR_FILE,
+		               "percent_of: rated, but the machine has no rated value for %s",
+		               channel->name);
+	if (own->command >= 0 &&
+	    !dimension_agrees(channels[own->command].unit->dimension, channel->unit->dimension))
+		return err_set(reterr, ERR_FILE, "command %s is not of the dimension of %s",
+		               channels[own->command].name, channel->name);
 	return 0;
 }
 
 const struct check_kind check_step_response = {
     .name = "step_response",
-    .text = "see table",
+    .text = "how a channel answers a step of its command",
     .fields = &table,
     .params_size = sizeof(struct step_response),
     .metrics = metrics,
     .metric_count = FIELD_COUNT(metrics),
     .evaluate = evaluate,
+    .verify = verify,
 };
