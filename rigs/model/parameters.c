@@ -118,6 +118,6 @@ void model_config_init(struct model_config *config)
 		                        &quantity, NULL) == 0)
 			*(double *)at = quantity_si(quantity);
 		else
-			*(double *)at = NAN; /* a mistake of the table; model_new() refuses it */
+			*(double *)at = nan(""); /* a mistake of the table; model_new() refuses it */
 	}
 }

@@ -76,7 +76,7 @@ int model_signal_find(const char *name, size_t length)
 double model_read(struct model *model, int signal)
 {
 	if (signal < 0 || signal >= SIGNAL_COUNT)
-		return NAN;
+		return (double)NAN;
 	const struct where *where = &PLACES[signal];
 	const void *at = (const char *)model + where->offset;
 	switch (where->holds) {
@@ -95,7 +95,7 @@ double model_read(struct model *model, int signal)
 	case HOLDS_TEXT:
 		break;
 	}
-	return NAN;
+	return (double)NAN;
 }
 
 const char *model_read_text(const struct model *model, int signal)

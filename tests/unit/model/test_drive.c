@@ -14,7 +14,7 @@ struct response {
 static struct response step_of(struct model *model, double from_rpm, double to_rpm)
 {
 	struct response response = {.overshoot = 0};
-	double t10 = NAN, share = 0;
+	double t10 = (double)NAN, share = 0;
 	bench_write(model, "controller.speed_command", to_rpm * RPM);
 	for (int k = 1; k <= 8000; k++) {
 		bench_run(model, 0.1);

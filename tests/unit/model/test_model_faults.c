@@ -44,7 +44,7 @@ static double detect(struct model *model, const char *relay, double most)
 		if (code(model) != 0)
 			return i;
 	}
-	return NAN;
+	return (double)NAN;
 }
 
 static bool trips(struct model *model, const char *relay, double most)

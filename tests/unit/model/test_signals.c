@@ -50,7 +50,7 @@ static void writes_beyond_the_range_are_refused_and_change_nothing(void **state)
 	    {"controller.speed_command", 3300 * RPM, MODEL_ACCEPTED},
 	    {"controller.speed_command", -3300 * RPM, MODEL_ACCEPTED},
 	    {"controller.speed_command", 3301 * RPM, MODEL_BAD_VALUE},
-	    {"controller.speed_command", NAN, MODEL_BAD_VALUE},
+	    {"controller.speed_command", (double)NAN, MODEL_BAD_VALUE},
 	    {"controller.control", 3, MODEL_ACCEPTED},
 	    {"controller.control", 4, MODEL_BAD_VALUE},
 	    {"controller.control", -1, MODEL_BAD_VALUE},
@@ -255,7 +255,7 @@ static void parameters_that_make_no_sense_are_refused(void **state)
 		  : i == 4 ? &config.dc_voltage_v
 		  : i == 5 ? &config.refresh_s
 		  : i == 6 ? &config.load_inertia_kgm2
-		           : &config.current_limit_a) = i < 6 ? NAN : 1000;
+		           : &config.current_limit_a) = i < 6 ? (double)NAN : 1000;
 		assert_int_equal(model_new(&config, &model, &err), -1);
 		assert_int_equal(err.code, ERR_FILE);
 		assert_null(model);
