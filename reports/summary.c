@@ -34,6 +34,9 @@ static void print_clean(const char *string, size_t most, FILE *out)
 	struct text text;
 	size_t length = string ? strlen(string) : 0;
 	text_init(&text, 0);
+	if (length > most)
+		while (most > 0 && ((unsigned char)string[most] & 0xC0) == 0x80)
+			most--;
 	text_add_clean(&text, string ? string : "", length > most ? most : length);
 	for (size_t i = 0; i < text.length; i++)
 		if (text.data[i] == '\n' || text.data[i] == '\t')

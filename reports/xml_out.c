@@ -62,9 +62,14 @@ static void note(struct xml_out *out, int rc)
 /* Cuts at a boundary of a character, and says so. */
 static void clean(struct text *text, const char *bytes, bool one_line)
 {
-	size_t length = strlen(bytes);
+	size_t length = strlen(bytes), taken = length;
+	if (length > XML_TEXT_MOST) {
+		taken = XML_TEXT_MOST;
+		while (taken > 0 && ((unsigned char)bytes[taken] & 0xC0) == 0x80)
+			taken--;
+	}
 	text_init(text, 0);
-	text_add_clean(text, bytes, length > XML_TEXT_MOST ? XML_TEXT_MOST : length);
+	text_add_clean(text, bytes, taken);
 	if (text->length > XML_TEXT_MOST || length > XML_TEXT_MOST) {
 		size_t cut = text->length > XML_TEXT_MOST ? XML_TEXT_MOST : text->length;
 		while (cut > 0 && cut < text->length && ((unsigned char)text->data[cut] & 0xC0) == 0x80)

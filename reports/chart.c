@@ -1,0 +1,524 @@
+/* SPDX-License-Identifier: Apache-2.0 */
+/*
+ * Charts of checks. Which channels belong to a check is read from its table of
+ * fields; where a limit or a metric lies, from the points that the check gave.
+ * So a new kind of check has its picture without a line here. What cannot be
+ * placed for certain is not drawn: a limit line in the wrong place would be
+ * believed.
+ */
+#include "chart.h"
+
+#include <math.h>
+#include <stdio.h>
+#include <string.h>
+
+#include "report_text.h"
+
+enum { PANELS_MOST = 3, POINTS_MOST = 12, TICKS_MOST = 12, LABELS_ROWS = 2 };
+
+static const double WIDTH = 760, LEFT = 96, RIGHT = 14, TOP = 40, HEIGHT = 150, GAP = 30,
+                    BOTTOM = 42;
+
+struct chart {
+	struct xml_out *out;
+	const struct rig *rig;
+	const struct test_result *test;
+	const struct check_result *check;
+	const char *id;
+	int columns;
+	int channels[PANELS_MOST];
+	size_t panel_count;
+	bool primary; /* the first channel is the field "channel": points' levels are on its axis */
+	int64_t t0_ns, t1_ns;
+	double t_factor; /* from ns to what the axis shows */
+	const char *t_unit;
+};
+
+/* ---- what there is to draw ------------------------------------------------ */
+
+static void add_channel(struct chart *chart, int channel)
+{
+	if (channel < 0 || (size_t)channel >= chart->rig->channel_count ||
+	    chart->panel_count == PANELS_MOST || !chart->test->series ||
+	    chart->test->series[channel].rows == 0)
+		return;
+	for (size_t i = 0; i < chart->panel_count; i++)
+		if (chart->channels[i] == channel)
+			return;
+	chart->channels[chart->panel_count++] = channel;
+}
+
+static void find_channels(struct chart *chart)
+{
+	const struct check_use *use = chart->check->use;
+	if (!use->params || !use->kind->fields)
+		return;
+	for (size_t i = 0; i < use->kind->fields->count; i++) {
+		const struct field *field = &use->kind->fields->fields[i];
+		const char *at = (const char *)use->params + field->offset;
+		if (field->kind == FIELD_CHANNEL) {
+			int channel;
+			memcpy(&channel, at, sizeof channel);
+			add_channel(chart, channel);
+			if (strcmp(field->key, "channel") == 0 && chart->panel_count == 1)
+				chart->primary = true;
+		} else if (field->kind == FIELD_CONDITION) {
+			struct condition condition;
+			memcpy(&condition, at, sizeof condition);
+			add_channel(chart, condition.channel);
+		} else if (field->kind == FIELD_CHANNELS) {
+			struct int_list list;
+			memcpy(&list, at, sizeof list);
+			for (size_t j = 0; list.items && j < list.count; j++)
+				add_channel(chart, list.items[j]);
+		}
+	}
+}
+
+static bool is_placed(const struct metric_point *point)
+{
+	return point->earliest_ns <= point->latest_ns && point->latest_ns > 0;
+}
+
+static const struct mark *mark_of_field(const struct chart *chart)
+{
+	const struct check_use *use = chart->check->use;
+	const struct recorded_test *recorded = chart->test->recorded;
+	for (size_t i = 0; use->params && use->kind->fields && i < use->kind->fields->count; i++) {
+		const struct field *field = &use->kind->fields->fields[i];
+		int mark;
+		if (field->kind != FIELD_MARK)
+			continue;
+		memcpy(&mark, (const char *)use->params + field->offset, sizeof mark);
+		if (mark >= 0 && (size_t)mark < recorded->mark_count && recorded->marks[mark].reached)
+			return &recorded->marks[mark];
+	}
+	return NULL;
+}
+
+static void widen(int64_t *t0, int64_t *t1, int64_t earliest, int64_t latest)
+{
+	if (earliest < *t0)
+		*t0 = earliest;
+	if (latest > *t1)
+		*t1 = latest;
+}
+
+/* The whole stimulus; where all that matters is a small part of it, that part and its surroundings.
+ */
+static void find_times(struct chart *chart)
+{
+	const struct recorded_test *recorded = chart->test->recorded;
+	int64_t begin = recorded->begin_ns, end = recorded->end_ns, t0 = INT64_MAX, t1 = INT64_MIN;
+	if (end <= begin)
+		end = begin + NS_PER_MS;
+	const struct mark *mark = mark_of_field(chart);
+	if (mark)
+		widen(&t0, &t1, mark->earliest_ns, mark->latest_ns);
+	for (size_t m = 0; m < chart->check->metric_count; m++) {
+		const struct metric *metric = &chart->check->metrics[m].metric;
+		for (size_t p = 0; p < metric->point_count; p++)
+			if (is_placed(&metric->points[p]))
+				widen(&t0, &t1, metric->points[p].earliest_ns, metric->points[p].latest_ns);
+	}
+	chart->t0_ns = begin;
+	chart->t1_ns = end;
+	if (t0 >= begin && t1 <= end && t1 > t0 && (t1 - t0) < (end - begin) / 5) {
+		int64_t span = t1 - t0;
+		chart->t0_ns = t0 - span > begin ? t0 - span : begin;
+		chart->t1_ns = t1 + span < end ? t1 + span : end;
+	}
+	bool short_time = chart->t1_ns - begin < 2 * NS_PER_S;
+	chart->t_factor = short_time ? 1e-6 : 1e-9;
+	chart->t_unit = short_time ? "ms" : "s";
+}
+
+/* ---- limits --------------------------------------------------------------- */
+
+/* True where the value of a metric is a level on the axis of the first panel. */
+static bool is_level(const struct chart *chart, const struct metric *metric)
+{
+	enum metric_shape shape = metric->kind->shape;
+	if (!chart->primary || !isfinite(metric->value) ||
+	    (shape != METRIC_LEVEL && shape != METRIC_ANGLE_ELEC && shape != METRIC_ANGLE_MECH) ||
+	    metric->unit != chart->rig->infos[chart->channels[0]].unit)
+		return false;
+	for (size_t i = 0; i < metric->point_count; i++)
+		if (fabs(metric->points[i].level - metric->value) <= 1e-9 * fmax(1, fabs(metric->value)))
+			return true;
+	return false;
+}
+
+/* True where a metric is the time from the mark of the check to one of its points. */
+static bool is_time_from(const struct mark *mark, const struct metric *metric)
+{
+	if (!mark || metric->kind->shape != METRIC_TIME || !isfinite(metric->value))
+		return false;
+	double from = (double)mark->earliest_ns + (double)(mark->latest_ns - mark->earliest_ns) / 2;
+	double slack = fmax(metric_uncertainty(metric), 1e-6) * 1e9;
+	for (size_t i = 0; i < metric->point_count; i++) {
+		const struct metric_point *point = &metric->points[i];
+		double at =
+		    (double)point->earliest_ns + (double)(point->latest_ns - point->earliest_ns) / 2;
+		if (is_placed(point) && fabs(at - from - metric->value * 1e9) <= slack)
+			return true;
+	}
+	return false;
+}
+
+/* ---- drawing -------------------------------------------------------------- */
+
+static void line(struct xml_out *out, double x1, double y1, double x2, double y2,
+                 const char *stroke, const char *dash)
+{
+	xml_open(out, "line");
+	xml_attrf(out, "x1", "%.1f", x1);
+	xml_attrf(out, "y1", "%.1f", y1);
+	xml_attrf(out, "x2", "%.1f", x2);
+	xml_attrf(out, "y2", "%.1f", y2);
+	xml_attr(out, "stroke", stroke);
+	if (dash)
+		xml_attr(out, "stroke-dasharray", dash);
+	xml_close_void(out);
+}
+
+static void rectangle(struct xml_out *out, double x, double y, double width, double height,
+                      const char *fill, const char *opacity)
+{
+	xml_open(out, "rect");
+	xml_attrf(out, "x", "%.1f", x);
+	xml_attrf(out, "y", "%.1f", y);
+	xml_attrf(out, "width", "%.1f", width);
+	xml_attrf(out, "height", "%.1f", height);
+	xml_attr(out, "fill", fill);
+	if (opacity)
+		xml_attr(out, "fill-opacity", opacity);
+	xml_close_void(out);
+}
+
+static void label(struct xml_out *out, double x, double y, const char *anchor, const char *fill,
+                  const char *text)
+{
+	xml_open(out, "text");
+	xml_attrf(out, "x", "%.1f", x);
+	xml_attrf(out, "y", "%.1f", y);
+	xml_attr(out, "text-anchor", anchor);
+	xml_attr(out, "fill", fill);
+	xml_text(out, text);
+	xml_close(out);
+}
+
+/* 1, 2 or 5 times a power of ten, so that at most `most` ticks fit into the span. */
+static double tick_step(double span, int most)
+{
+	double raw = span / most, power = pow(10, floor(log10(raw)));
+	double share = raw / power;
+	return power * (share <= 1 ? 1 : share <= 2 ? 2 : share <= 5 ? 5 : 10);
+}
+
+static void tick_text(double value, double step, char *buffer, size_t size)
+{
+	double decimals = fmin(fmax(-floor(log10(step) + 1e-9), 0), 9);
+	(void)snprintf(buffer, size, "%.*f", (int)decimals, fabs(value) < step * 1e-6 ? 0.0 : value);
+}
+
+static void y_axis(const struct chart *chart, const struct chart_scale *scale,
+                   const struct channel_info *info)
+{
+	char text[80];
+	if (info->name_count) {
+		for (size_t i = 0; i < info->name_count && i < 24; i++) {
+			double value = info->named_values[i];
+			if (value < scale->low || value > scale->high)
+				continue;
+			line(chart->out, scale->x0, chart_y(scale, value), scale->x1, chart_y(scale, value),
+			     "#ddd8ca", NULL);
+			(void)snprintf(text, sizeof text, "%.15s", info->value_names[i]);
+			label(chart->out, scale->x0 - 6, chart_y(scale, value) + 4, "end", "#3a3833", text);
+		}
+		return;
+	}
+	double step = tick_step(scale->high - scale->low, 5);
+	double first = ceil(scale->low / step);
+	for (int i = 0; i < TICKS_MOST; i++) {
+		double value = (first + i) * step;
+		if (value > scale->high)
+			break;
+		double y = chart_y(scale, value);
+		line(chart->out, scale->x0, y, scale->x1, y, "#ddd8ca", NULL);
+		tick_text(value, step, text, sizeof text);
+		label(chart->out, scale->x0 - 6, y + 4, "end", "#3a3833", text);
+	}
+}
+
+static void x_axis(const struct chart *chart, double bottom)
+{
+	char text[80];
+	struct chart_scale scale = {
+	    .t0_ns = chart->t0_ns, .t1_ns = chart->t1_ns, .x0 = LEFT, .x1 = WIDTH - RIGHT};
+	double begin = (double)chart->test->recorded->begin_ns;
+	double low = ((double)chart->t0_ns - begin) * chart->t_factor;
+	double high = ((double)chart->t1_ns - begin) * chart->t_factor;
+	double step = tick_step(high - low, 8), first = ceil(low / step);
+	for (int i = 0; i < TICKS_MOST; i++) {
+		double value = (first + i) * step;
+		if (value > high)
+			break;
+		double x = chart_x(&scale, value / chart->t_factor + begin);
+		line(chart->out, x, bottom, x, bottom + 4, "#3a3833", NULL);
+		tick_text(value, step, text, sizeof text);
+		label(chart->out, x, bottom + 16, "middle", "#3a3833", text);
+	}
+	(void)snprintf(text, sizeof text, "time since the stimulus began, %s", chart->t_unit);
+	label(chart->out, (LEFT + WIDTH - RIGHT) / 2, bottom + 32, "middle", "#3a3833", text);
+}
+
+static bool same_quantity(const struct channel_info *command, const struct channel_info *panel)
+{
+	return panel->unit != unit_one() && panel->name_count == 0 &&
+	       dimension_agrees(command->unit->dimension, panel->unit->dimension);
+}
+
+static void take(double value, double *low, double *high)
+{
+	if (!isfinite(value))
+		return;
+	if (value < *low)
+		*low = value;
+	if (value > *high)
+		*high = value;
+}
+
+/* Least and greatest of what is drawn in a panel, with some air. */
+static void value_range(const struct chart *chart, size_t panel, double *ret_low, double *ret_high)
+{
+	const struct series *series = &chart->test->series[chart->channels[panel]];
+	const struct recorded_test *recorded = chart->test->recorded;
+	const struct channel_info *info = &chart->rig->infos[chart->channels[panel]];
+	double low = INFINITY, high = -INFINITY;
+	for (size_t row = series_first_at(series, chart->t0_ns); row < series->rows; row++) {
+		if (series_sent(series, row) > chart->t1_ns)
+			break;
+		take(series_value(series, row), &low, &high);
+	}
+	for (size_t i = 0; i < recorded->command_count; i++) {
+		const struct channel_info *command = &chart->rig->infos[recorded->commands[i].channel];
+		if (same_quantity(command, info) && recorded->commands[i].earliest_ns <= chart->t1_ns)
+			take(recorded->commands[i].value * command->unit->scale / info->unit->scale, &low,
+			     &high);
+	}
+	for (size_t m = 0; panel == 0 && m < chart->check->metric_count; m++) {
+		const struct metric_result *metric = &chart->check->metrics[m];
+		for (size_t l = 0; is_level(chart, &metric->metric) && l < metric->limit_count; l++) {
+			take(metric->limits[l].limit->min, &low, &high);
+			take(metric->limits[l].limit->max, &low, &high);
+		}
+	}
+	if (!isfinite(low)) {
+		low = 0;
+		high = 1;
+	}
+	double air = (high - low) * 0.08;
+	if (air <= 0)
+		air = fmax(fabs(high) * 0.1, info->resolution > 0 ? info->resolution : 0.5);
+	*ret_low = low - air;
+	*ret_high = high + air;
+}
+
+static void limit_lines(const struct chart *chart, const struct chart_scale *scale)
+{
+	const struct mark *mark = mark_of_field(chart);
+	char text[120];
+	for (size_t m = 0; m < chart->check->metric_count; m++) {
+		const struct metric_result *result = &chart->check->metrics[m];
+		bool level = is_level(chart, &result->metric), time = is_time_from(mark, &result->metric);
+		for (size_t l = 0; l < result->limit_count; l++) {
+			const struct limit *limit = result->limits[l].limit;
+			const double values[2] = {limit->min, limit->max};
+			for (int i = 0; i < 2; i++) {
+				const char *name = result->metric.kind->name;
+				if (!isfinite(values[i]) || !(level || time))
+					continue;
+				(void)snprintf(text, sizeof text, "%.40s %s", name,
+				               i == 0 ? "at least" : "at most");
+				if (level) {
+					double y = chart_y(scale, values[i]);
+					line(chart->out, scale->x0, y, scale->x1, y, "#9b2335", "2 3");
+					label(chart->out, scale->x1 - 4, y - 3, "end", "#9b2335", text);
+					continue;
+				}
+				double x = chart_x(scale, (double)mark->latest_ns + values[i] * 1e9);
+				if (x < scale->x0 || x > scale->x1)
+					continue;
+				line(chart->out, x, scale->y_high, x, scale->y_low, "#9b2335", "2 3");
+				label(chart->out, x + 3, scale->y_low - 4 - 12.0 * (double)(m % 4), "start",
+				      "#9b2335", text);
+			}
+		}
+	}
+}
+
+static void mark_bands(const struct chart *chart, const struct chart_scale *scale, bool named)
+{
+	const struct recorded_test *recorded = chart->test->recorded;
+	int row = 0;
+	for (size_t i = 0; i < recorded->mark_count; i++) {
+		const struct mark *mark = &recorded->marks[i];
+		if (!mark->reached || mark->latest_ns < chart->t0_ns || mark->earliest_ns > chart->t1_ns)
+			continue;
+		double x1 = fmax(chart_x(scale, (double)mark->earliest_ns), scale->x0);
+		double x2 = fmin(chart_x(scale, (double)mark->latest_ns), scale->x1);
+		rectangle(chart->out, x1, scale->y_high, fmax(x2 - x1, 1), scale->y_low - scale->y_high,
+		          "#6b6658", "0.45");
+		if (named)
+			label(chart->out, x1 + 3, scale->y_high + 11 + 12.0 * (row++ % LABELS_ROWS), "start",
+			      "#5a5547", mark->name);
+	}
+}
+
+static void bad_bands(const struct chart *chart, const struct chart_scale *scale,
+                      const struct series *series)
+{
+	for (size_t i = 0; i < series->bad_count && i < 200; i++) {
+		if (series->bad[i].first >= series->rows || series->bad[i].last >= series->rows)
+			continue;
+		double x1 = chart_x(scale, (double)series_sent(series, series->bad[i].first));
+		double x2 = chart_x(scale, (double)series_received(series, series->bad[i].last));
+		x1 = fmax(x1, scale->x0);
+		x2 = fmin(x2, scale->x1);
+		if (x2 > x1)
+			rectangle(chart->out, x1, scale->y_high, x2 - x1, scale->y_low - scale->y_high,
+			          "#9b2335", "0.15");
+	}
+}
+
+/* Where the metrics lie: a bar over the interval, a number that the caption explains. */
+static void metric_points(const struct chart *chart, const struct chart_scale *scale)
+{
+	char number[16];
+	int count = 0;
+	for (size_t m = 0; m < chart->check->metric_count; m++) {
+		const struct metric *metric = &chart->check->metrics[m].metric;
+		for (size_t p = 0; p < metric->point_count && count < POINTS_MOST; p++) {
+			const struct metric_point *point = &metric->points[p];
+			if (!is_placed(point) || point->latest_ns < chart->t0_ns ||
+			    point->earliest_ns > chart->t1_ns)
+				continue;
+			bool on_axis = chart->primary && isfinite(point->level) && point->level >= scale->low &&
+			               point->level <= scale->high;
+			double x1 = fmax(chart_x(scale, (double)point->earliest_ns), scale->x0);
+			double x2 = fmin(chart_x(scale, (double)point->latest_ns), scale->x1);
+			double y = on_axis ? chart_y(scale, point->level) : scale->y_low - 3;
+			rectangle(chart->out, x1 - 1.5, y - 2.5, fmax(x2 - x1, 0) + 3, 5, "#111111", "0.75");
+			(void)snprintf(number, sizeof number, "%d", ++count);
+			label(chart->out, x2 + 4, y - 4, "start", "#111111", number);
+		}
+	}
+}
+
+static void panel(const struct chart *chart, size_t index, double top)
+{
+	const struct channel_info *info = &chart->rig->infos[chart->channels[index]];
+	const struct series *series = &chart->test->series[chart->channels[index]];
+	const struct recorded_test *recorded = chart->test->recorded;
+	const struct test *test = chart->test->test;
+	struct chart_scale scale = {.t0_ns = chart->t0_ns,
+	                            .t1_ns = chart->t1_ns,
+	                            .x0 = LEFT,
+	                            .x1 = WIDTH - RIGHT,
+	                            .y_low = top + HEIGHT,
+	                            .y_high = top};
+	char text[320];
+	int64_t every = test->group_count ? test->groups[0].every_ns : 0;
+	value_range(chart, index, &scale.low, &scale.high);
+	bad_bands(chart, &scale, series);
+	y_axis(chart, &scale, info);
+	mark_bands(chart, &scale, index == 0);
+	if (index == 0)
+		limit_lines(chart, &scale);
+	bool commanded = false;
+	for (size_t c = 0; c < chart->rig->channel_count; c++)
+		if (chart->rig->channels[c].command && same_quantity(&chart->rig->infos[c], info)) {
+			for (size_t i = 0; i < recorded->command_count && !commanded; i++)
+				commanded = recorded->commands[i].channel == (int)c;
+			chart_commands(chart->out, recorded->commands, recorded->command_count, (int)c,
+			               chart->rig->infos[c].unit->scale / info->unit->scale, &scale);
+		}
+	chart_curve(chart->out, series, &scale, chart->columns, 5 * every);
+	if (index == 0)
+		metric_points(chart, &scale);
+	line(chart->out, scale.x0, scale.y_low, scale.x1, scale.y_low, "#3a3833", NULL);
+	line(chart->out, scale.x0, scale.y_low, scale.x0, scale.y_high, "#3a3833", NULL);
+	(void)snprintf(text, sizeof text, "%.64s%s%.40s (%s)%s", info->name,
+	               info->unit == unit_one() ? "" : ", ",
+	               info->unit == unit_one() ? "" : info->unit->name, evidence_name(info->evidence),
+	               commanded ? "; dashed: what was commanded" : "");
+	label(chart->out, scale.x0, top - 7, "start", "#1f4e6b", text);
+}
+
+static void caption(const struct chart *chart)
+{
+	int count = 0;
+	xml_open(chart->out, "figcaption");
+	xml_textf(chart->out, "%.64s. Grey: marks with their interval. Dotted: limits.",
+	          chart->check->use->name);
+	for (size_t m = 0; m < chart->check->metric_count; m++) {
+		const struct metric *metric = &chart->check->metrics[m].metric;
+		for (size_t p = 0; p < metric->point_count && count < POINTS_MOST; p++) {
+			const struct metric_point *point = &metric->points[p];
+			if (!is_placed(point) || point->latest_ns < chart->t0_ns ||
+			    point->earliest_ns > chart->t1_ns)
+				continue;
+			xml_textf(chart->out, " %d: %s%s%s.", ++count, metric->kind->name,
+			          point->label && *point->label ? ", " : "", point->label ? point->label : "");
+		}
+	}
+	xml_close(chart->out);
+}
+
+bool chart_possible(const struct rig *rig, const struct test_result *test,
+                    const struct check_result *check)
+{
+	struct chart chart = {.rig = rig, .test = test, .check = check};
+	if (!rig || !test->recorded || !test->series || check->verdict == VERDICT_SKIPPED)
+		return false;
+	find_channels(&chart);
+	return chart.panel_count > 0;
+}
+
+void chart_write(struct xml_out *out, const struct rig *rig, const struct test_result *test,
+                 const struct check_result *check, const char *id, int columns)
+{
+	struct chart chart = {.out = out, .rig = rig, .test = test, .check = check, .id = id};
+	chart.columns = columns < CHART_COLUMNS_LEAST  ? CHART_COLUMNS_LEAST
+	                : columns > CHART_COLUMNS_MOST ? CHART_COLUMNS_MOST
+	                                               : columns;
+	if (!chart_possible(rig, test, check))
+		return;
+	find_channels(&chart);
+	find_times(&chart);
+	double bottom =
+	    TOP + HEIGHT * (double)chart.panel_count + GAP * (double)(chart.panel_count - 1);
+	xml_open(out, "figure");
+	xml_open(out, "svg");
+	xml_attr(out, "xmlns", "http://www.w3.org/2000/svg");
+	xml_attr(out, "role", "img");
+	xml_attrf(out, "aria-labelledby", "%s-title", id);
+	xml_attrf(out, "viewBox", "0 0 %.0f %.0f", WIDTH, bottom + BOTTOM);
+	xml_attrf(out, "width", "%.0f", WIDTH);
+	xml_attrf(out, "height", "%.0f", bottom + BOTTOM);
+	xml_attr(out, "font-family", "system-ui, sans-serif");
+	xml_attr(out, "font-size", "11");
+	xml_open(out, "title");
+	xml_attrf(out, "id", "%s-title", id);
+	xml_textf(out, "%s of test %s: %s over time", check->use->name, test->test->name,
+	          rig->infos[chart.channels[0]].name);
+	xml_close(out);
+	rectangle(out, 0, 0, WIDTH, bottom + BOTTOM, "#fbfaf5", NULL);
+	for (size_t i = 0; i < chart.panel_count; i++)
+		panel(&chart, i, TOP - 14 + (HEIGHT + GAP) * (double)i);
+	x_axis(&chart, bottom - 14);
+	xml_close(out);
+	caption(&chart);
+	xml_close(out);
+}

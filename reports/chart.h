@@ -1,0 +1,53 @@
+/* SPDX-License-Identifier: Apache-2.0 */
+#ifndef DRIVETRIAL_CHART_H
+#define DRIVETRIAL_CHART_H
+/*
+ * One check as a picture: inline SVG with presentation attributes only, on a
+ * light panel of its own, so that it looks the same in dark mode, in print and
+ * without the stylesheet. Lines differ by dash and by label, not by hue alone.
+ * Private to this folder.
+ */
+#include "judge.h"
+#include "xml_out.h"
+
+enum { CHART_COLUMNS_LEAST = 60, CHART_COLUMNS_MOST = 640 };
+
+/* Whether there is something to draw: a channel of the check that was sampled. */
+bool chart_possible(const struct rig *rig, const struct test_result *test,
+                    const struct check_result *check);
+/*
+ * Writes <figure>...</figure>. id: unique in the page. columns: how finely a
+ * curve is drawn; each column keeps its least and greatest value.
+ */
+void chart_write(struct xml_out *out, const struct rig *rig, const struct test_result *test,
+                 const struct check_result *check, const char *id, int columns);
+
+/* ---- chart_curve.c: one polyline after another ---------------------------- */
+
+struct chart_scale {
+	int64_t t0_ns, t1_ns;
+	double x0, x1; /* of t0, t1 */
+	double low, high;
+	double y_low, y_high; /* of low, high; y grows downwards */
+};
+
+static inline double chart_x(const struct chart_scale *scale, double t_ns)
+{
+	return scale->x0 + (t_ns - (double)scale->t0_ns) * (scale->x1 - scale->x0) /
+	                       (double)(scale->t1_ns - scale->t0_ns);
+}
+
+static inline double chart_y(const struct chart_scale *scale, double value)
+{
+	return scale->y_low +
+	       (value - scale->low) * (scale->y_high - scale->y_low) / (scale->high - scale->low);
+}
+
+/* gap_ns: neighbours further apart are not joined; 0: all are. */
+void chart_curve(struct xml_out *out, const struct series *series, const struct chart_scale *scale,
+                 int columns, int64_t gap_ns);
+/* A command holds its value until the next one of the same channel. factor: to the panel's unit. */
+void chart_commands(struct xml_out *out, const struct command *commands, size_t count, int channel,
+                    double factor, const struct chart_scale *scale);
+
+#endif
