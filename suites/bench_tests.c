@@ -66,6 +66,8 @@ static int checks_of(struct bench *b, struct test *test, const char *lines)
 	                    .reterr = b->reterr,
 	                    .test = test,
 	                    .sampled = sampled,
+	                    .sample_known = true,
+	                    .stimulus_known = true,
 	                    .rule = DECISION_GUARDED};
 	l.binder = (struct binder){.arena = b->arena,
 	                           .faults = faults,

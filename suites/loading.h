@@ -37,10 +37,13 @@ struct loading {
 	size_t value_count, suite_value_count;
 	struct sample_group *groups; /* of the suite */
 	size_t group_count;
+	bool groups_known; /* false: the suite's `sample` has faults */
 	/* while a test is read */
 	struct test *test;
-	enum decision_rule rule;           /* of the test */
-	unsigned char *sampled;            /* a byte per channel of the rig */
+	bool sample_known,
+	    stimulus_known;      /* false: it has faults, and what follows from them is no news */
+	enum decision_rule rule; /* of the test */
+	unsigned char *sampled;  /* a byte per channel of the rig */
 	const struct yaml_node *check_map; /* fields of the check at hand */
 };
 

@@ -27,7 +27,6 @@ static const struct field SUITE_FIELDS[] = {
      .text = "name of the suite, for reports"},
     {.key = "note",
      .kind = FIELD_TEXT,
-     .fallback = "",
      .offset = offsetof(struct suite_head, note),
      .text = "one line about it, for reports"},
     {.key = "expect",
@@ -123,8 +122,7 @@ static int read_tree(struct loading *l, const struct yaml_node *root, struct ove
 	overrides_check(l, overrides, override_count);
 	expect_load(l, yaml_get(root, "expect"));
 	const struct yaml_node *sample = yaml_get(root, "sample");
-	if (sample)
-		(void)sample_load(l, sample, &l->groups, &l->group_count);
+	l->groups_known = !sample || sample_load(l, sample, &l->groups, &l->group_count);
 	if (bench_tests_make(l->rig, l->arena, &bench, &bench_count, l->reterr) < 0)
 		return -1;
 	const struct yaml_node *tests = yaml_get(root, "tests");

@@ -25,7 +25,7 @@ static int use_channel(struct loading *l, const struct field *field, const struc
 		           c->info.name);
 		return -1;
 	}
-	if (l->sampled[channel])
+	if (l->sampled[channel] || !l->sample_known)
 		return channel;
 	faults_add(l->faults, node->at,
 	           "channel '%s' is judged but not sampled: add it to `sample` of the test or suite",
@@ -64,6 +64,8 @@ static bool resolve_mark(struct loading *l, const struct field *field, const str
 	*ret = mark_names_find(&l->test->marks, node->text);
 	if (*ret >= 0)
 		return true;
+	if (!l->stimulus_known)
+		return false;
 	char buffer[YAML_SHOWN];
 	const char *nearest = text_nearest(node->text, l->test->marks.names, l->test->marks.count);
 	(void)yaml_shown(node->text, node->length, buffer);
@@ -154,7 +156,7 @@ static bool resolve_window(struct loading *l, const struct yaml_node *node, stru
 		return false;
 	int64_t least_ns, most_ns;
 	steps_duration(l->test->stimulus, l->test->stimulus_count, &least_ns, &most_ns);
-	if (ret->after_ns + ret->for_ns <= most_ns)
+	if (ret->after_ns + ret->for_ns <= most_ns || !l->stimulus_known)
 		return true;
 	char a[40], b[40];
 	faults_add(l->faults, node->at,
@@ -206,6 +208,8 @@ static bool resolve_line(struct loading *l, const struct field *field, const str
 	                    FIELD_COUNT(names));
 	if (*ret)
 		return true;
+	if (!l->stimulus_known)
+		return false;
 	char buffer[YAML_SHOWN];
 	const char *nearest = text_nearest(node->text, names, count);
 	(void)yaml_shown(node->text, node->length, buffer);

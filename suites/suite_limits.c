@@ -103,7 +103,7 @@ static bool bound_load(struct loading *l, const struct yaml_node *node,
 	case METRIC_COUNT:
 		return bind_number(&l->binder, node, ret);
 	case METRIC_PERCENT:
-		if (!bind_quantity(&l->binder, node, NULL, &DIM_NUMBER, &quantity))
+		if (!bind_quantity(&l->binder, node, unit_one(), &DIM_NUMBER, &quantity))
 			return false;
 		if (quantity.unit != unit_percent() && quantity.value != 0) {
 			faults_add(l->faults, node->at, "%s is a percentage: write it with %%, as in 12 %%",

@@ -67,6 +67,10 @@ static bool every_load(struct loading *l, const struct yaml_node *node, int64_t 
 		*ret_ns = 0;
 		return true;
 	}
+	if (value->kind == YAML_SCALAR && text_is_name(value->text, value->length)) {
+		faults_add(l->faults, value->at, "every: expected a time, such as 2 ms, or `fastest`");
+		return false;
+	}
 	if (!bind_duration(&l->binder, value, ret_ns))
 		return false;
 	if (*ret_ns < EVERY_LEAST_NS || *ret_ns > 60 * NS_PER_S) {

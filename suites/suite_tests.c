@@ -122,15 +122,49 @@ static void sample_of(struct loading *l, const struct yaml_node *node, struct te
 	const struct yaml_node *sample = yaml_get(node, "sample");
 	test->groups = l->groups;
 	test->group_count = l->group_count;
+	l->sample_known = l->groups_known;
 	if (sample)
-		(void)sample_load(l, sample, &test->groups, &test->group_count);
-	else if (!l->groups)
+		l->sample_known = sample_load(l, sample, &test->groups, &test->group_count);
+	if (!sample && !l->groups && l->groups_known) {
 		faults_add(l->faults, node->at,
 		           "nothing is sampled: give `sample: {every, channels}` in the test or the suite");
+		l->sample_known = false;
+	}
 	memset(l->sampled, 0, l->rig->channel_count);
 	for (size_t g = 0; g < test->group_count; g++)
 		for (size_t c = 0; c < test->groups[g].channel_count; c++)
 			l->sampled[test->groups[g].channels[c]] = 1;
+}
+
+static void words_of(struct loading *l, const struct yaml_node *node, struct test *test)
+{
+	const struct yaml_node *title = yaml_get(node, "title");
+	const struct yaml_node *requirement = yaml_get(node, "requirement");
+	const struct yaml_node *tags = yaml_get(node, "tags");
+	const char *text = title ? values_text(l, title) : NULL;
+	test->title = text ? text : "";
+	if (requirement)
+		(void)texts_load(l, requirement, false, "requirement", &test->requirements,
+		                 &test->requirement_count);
+	if (tags)
+		(void)texts_load(l, tags, true, "tag", &test->tags, &test->tag_count);
+}
+
+static void stimulus_of(struct loading *l, const struct yaml_node *node, struct test *test)
+{
+	const struct yaml_node *stimulus = yaml_get(node, "stimulus");
+	const struct yaml_node *restore = yaml_get(node, "restore");
+	size_t before = faults_total(l->faults);
+	l->stimulus_known = false;
+	if (stimulus && steps_of(l, stimulus, "'stimulus'", STIMULUS_STEPS, &test->marks,
+	                         &test->stimulus, &test->stimulus_count)) {
+		if (stimulus->count == 0)
+			faults_add(l->faults, stimulus->at, "a stimulus without steps commands nothing");
+		l->stimulus_known = faults_total(l->faults) == before;
+	}
+	if (restore)
+		(void)steps_of(l, restore, "'restore'", RESTORE_STEPS, NULL, &test->restore,
+		               &test->restore_count);
 }
 
 /* One case; the values of the sweep are in place. */
@@ -140,31 +174,12 @@ static void case_load(struct loading *l, const struct yaml_node *node, struct te
 	(void)bind_mapping(&l->binder, &TEST_TABLE, node, &file);
 	test->at = node->at;
 	test->continues = file.continues;
-	test->title = "";
 	l->test = test;
 	l->rule = (enum decision_rule)file.decision;
-	const struct yaml_node *title = yaml_get(node, "title");
-	const struct yaml_node *requirement = yaml_get(node, "requirement");
-	const struct yaml_node *tags = yaml_get(node, "tags");
-	const struct yaml_node *stimulus = yaml_get(node, "stimulus");
-	const struct yaml_node *restore = yaml_get(node, "restore");
-	const struct yaml_node *checks = yaml_get(node, "checks");
-	const char *text = title ? values_text(l, title) : NULL;
-	test->title = text ? text : "";
-	if (requirement)
-		(void)texts_load(l, requirement, false, "requirement", &test->requirements,
-		                 &test->requirement_count);
-	if (tags)
-		(void)texts_load(l, tags, true, "tag", &test->tags, &test->tag_count);
+	words_of(l, node, test);
 	sample_of(l, node, test);
-	if (stimulus &&
-	    steps_of(l, stimulus, "'stimulus'", STIMULUS_STEPS, &test->marks, &test->stimulus,
-	             &test->stimulus_count) &&
-	    stimulus->count == 0)
-		faults_add(l->faults, stimulus->at, "a stimulus without steps commands nothing");
-	if (restore)
-		(void)steps_of(l, restore, "'restore'", RESTORE_STEPS, NULL, &test->restore,
-		               &test->restore_count);
+	stimulus_of(l, node, test);
+	const struct yaml_node *checks = yaml_get(node, "checks");
 	if (checks && !l->out_of_memory)
 		checks_load(l, checks);
 	l->test = NULL;
@@ -208,7 +223,7 @@ static void test_load(struct loading *l, const struct yaml_node *node, bool firs
 		faults_add(l->faults, name->at, "test '%s' is there already, in line %d", base,
 		           taken->at.line);
 	if (!sweep_load(l, node, &sweep))
-		sweep = (struct sweep){.points = 1, .cases = 1};
+		return;
 	size_t before = faults_total(l->faults);
 	for (size_t i = 0; i < sweep.cases && !l->out_of_memory; i++) {
 		struct test test = {0};

@@ -98,6 +98,14 @@ static struct value *value_at(struct loading *l, const char *text, size_t length
 	return NULL;
 }
 
+/* "" of a value that is no scalar, which is a fault already. */
+static const char *value_text(const struct value *value)
+{
+	if (value->override)
+		return value->override;
+	return value->node->kind == YAML_SCALAR ? value->node->text : "";
+}
+
 const char *values_text(struct loading *l, const struct yaml_node *node)
 {
 	const char *raw;
@@ -122,7 +130,7 @@ const char *values_text(struct loading *l, const struct yaml_node *node)
 			good = false;
 		} else {
 			value->used = true;
-			text_puts(&out, value->override ? value->override : value->node->text);
+			text_puts(&out, value_text(value));
 		}
 		c += 1 + taken;
 	}
@@ -136,16 +144,14 @@ const char *values_text(struct loading *l, const struct yaml_node *node)
 static void value_load(struct loading *l, const struct yaml_pair *pair, struct override *overrides,
                        size_t override_count)
 {
-	const char *name, *shown;
-	if (!bind_name(&l->binder, pair->key, &name) ||
-	    !bind_expect(&l->binder, pair->value, YAML_SCALAR, "a value of the suite") ||
-	    !bind_text(&l->binder, pair->value, &shown))
+	const char *name, *shown = "";
+	if (!bind_name(&l->binder, pair->key, &name))
 		return;
-	if (shown[0] == '$') {
+	if (bind_expect(&l->binder, pair->value, YAML_SCALAR, "a value of the suite") &&
+	    bind_text(&l->binder, pair->value, &shown) && shown[0] == '$')
 		faults_add(l->faults, pair->value->at,
 		           "'%s' stands for another value: write the number itself", name);
-		return;
-	}
+	/* With faults too it is known by its name, else every use would be a fault. */
 	struct value *value = &l->values[l->value_count++];
 	*value = (struct value){.name = name, .node = pair->value};
 	for (size_t i = 0; i < override_count; i++)
