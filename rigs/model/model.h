@@ -85,7 +85,7 @@ int model_defect_find(const char *name);                     /* row, or -1 */
 int model_new(const struct model_config *config, struct model **ret_model, struct err *reterr);
 void model_release(struct model *model); /* takes NULL */
 
-/* Moves time on; an earlier time changes nothing. Costs about 1 us a control period. */
+/* Moves time on; an earlier time changes nothing. Costs about 0.25 us a control period. */
 void model_advance(struct model *model, int64_t until_ns);
 int64_t model_now(const struct model *model);
 

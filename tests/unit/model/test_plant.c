@@ -118,6 +118,39 @@ static double end_current(int parts)
 	return plant.current_q_a;
 }
 
+/*
+ * A salient machine on a soft DC link: stator coordinates and phase quantities, integrated with
+ * SciPy's DOP853 to 1e-12 (tests/outside/model_plant.py prints this line).
+ */
+static void machine_link_and_shaft_agree_with_an_independent_integration(void **state)
+{
+	(void)state;
+	for (int parts = 1; parts <= 4; parts *= 4) {
+		struct plant plant = plant_of(4, 0.085, 3.1e-3, 4.5e-3, 0.9, 310);
+		plant.inertia_kgm2 = 0.0011;
+		plant.viscous_nms = 0.0005;
+		plant.coulomb_nm = 0.05;
+		plant.capacitance_f = 470e-6;
+		plant.source_resistance_ohm = 0.8;
+		plant.bleeder_ohm = 1e4;
+		plant.angle_rad = 0.3;
+		plant.speed_rad_s = 50;
+		plant_start(&plant);
+		for (int k = 0; k < 60; k++) {
+			plant.duty_alpha = 0.22 * cos(4 * 50 * 1e-4 * k + 3);
+			plant.duty_beta = 0.22 * sin(4 * 50 * 1e-4 * k + 3);
+			plant_step(&plant, 1e-4, parts);
+		}
+		double share = parts == 1 ? 1 : 1.0 / 128; /* fourth order: 1/256 in theory */
+		assert_near(plant.phase_a[0], -34.088830873, 3e-6 * share, "A");
+		assert_near(plant.phase_a[1], 4.423798325, 3e-6 * share, "A");
+		assert_near(plant.phase_a[2], 29.665032547, 3e-6 * share, "A");
+		assert_near(plant.speed_rad_s, 95.784287165, 1e-6 * share, "rad/s");
+		assert_near(plant.angle_rad, 0.721637015, 1e-8, "rad");
+		assert_near(plant.dc_v, 302.30647188, 5e-5 * share, "V");
+	}
+}
+
 /* The method is of fourth order: half the step, a sixteenth of the error. */
 static void halving_the_integration_step_cuts_the_error(void **state)
 {
@@ -217,6 +250,7 @@ int main(void)
 	    cmocka_unit_test(steady_currents_and_torque_follow_the_dq_equations),
 	    cmocka_unit_test(at_base_speed_the_linear_limit_just_holds_the_current),
 	    cmocka_unit_test(at_standstill_a_current_rises_with_l_over_r),
+	    cmocka_unit_test(machine_link_and_shaft_agree_with_an_independent_integration),
 	    cmocka_unit_test(halving_the_integration_step_cuts_the_error),
 	    cmocka_unit_test(pulses_off_takes_the_current_off_within_a_millisecond),
 	    cmocka_unit_test(above_the_dc_voltage_the_diodes_rectify_the_back_emf),
