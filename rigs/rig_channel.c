@@ -79,16 +79,14 @@ const struct unit *rig_unit_load(struct rig_loader *loader, const struct yaml_no
 	const struct unit *unit = unit_find(name, strlen(name));
 	if (unit)
 		return unit;
-	size_t count, best = SIZE_MAX;
+	size_t count;
 	const struct unit *units = unit_table(&count);
 	const char *nearest = NULL;
-	for (size_t i = 0; i < count; i++) {
-		size_t distance = text_distance(name, units[i].name);
-		if (distance < best && text_nearest(name, &units[i].name, 1)) {
-			best = distance;
+	for (size_t i = 0; i < count && !nearest; i++) /* RPM for rpm */
+		if (strcasecmp(name, units[i].name) == 0)
 			nearest = units[i].name;
-		}
-	}
+	for (size_t i = 0; i < count && !nearest; i++)
+		nearest = text_nearest(name, &units[i].name, 1);
 	char shown[YAML_SHOWN];
 	rig_fault(loader, node, "there is no unit '%s'%s%s%s", yaml_shown(name, strlen(name), shown),
 	          nearest ? "; did you mean '" : "", nearest ? nearest : "", nearest ? "'?" : "");

@@ -185,9 +185,11 @@ int rig_names_load(struct rig_loader *loader, const struct yaml_node *node,
 		if (values[n] < least || values[n] > most)
 			rig_fault(loader, key, "its coding cannot hold %.10g", values[n]);
 		for (size_t j = 0; j < n; j++)
-			if (strcmp(names[j], names[n]) == 0 || values[j] == values[n])
-				rig_fault(loader, node->pairs[i].value, "%.10g and %.10g: one name for each value",
-				          values[j], values[n]);
+			if (values[j] == values[n])
+				rig_fault(loader, key, "%.10g has the name '%s' already", values[n], names[j]);
+			else if (strcmp(names[j], names[n]) == 0)
+				rig_fault(loader, node->pairs[i].value, "'%s' is the name of %.10g already",
+				          names[n], values[j]);
 		info->name_count++;
 	}
 	info->named_values = values;

@@ -114,15 +114,15 @@ static const struct unit *result_unit(struct rig_loader *loader, const struct ya
 {
 	const struct yaml_node *given = yaml_get(node, "unit");
 	char wanted[96];
-	(void)dimension_name(dimension, wanted, sizeof wanted);
 	const char *name = dimension_name(dimension, wanted, sizeof wanted);
 	const struct unit *unit = given ? rig_unit_load(loader, given) : unit_default(dimension);
 	if (!unit && !given)
-		rig_fault(loader, node, "give the unit of the result, which is a %s", name);
+		rig_fault(loader, node, "give the unit of the result, which is %s %s", text_article(name),
+		          name);
 	if (!unit || dimension_agrees(unit->dimension, dimension))
 		return unit;
-	rig_fault(loader, given, "unit: the result is a %s, which is not given in %s", name,
-	          unit->name);
+	rig_fault(loader, given, "unit: the result is %s %s, which is not given in %s",
+	          text_article(name), name, unit->name);
 	return NULL;
 }
 

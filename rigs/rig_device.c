@@ -94,7 +94,8 @@ static void load_device(struct rig_loader *loader, const struct yaml_node *node,
 		          "in_flight: a serial line carries one request at a time");
 }
 
-static void check_under_test(struct rig_loader *loader, const struct yaml_node *node)
+static void check_under_test(struct rig_loader *loader, const struct yaml_node *node,
+                             bool had_faults)
 {
 	const struct rig *rig = loader->rig;
 	const char *first = NULL;
@@ -107,7 +108,7 @@ static void check_under_test(struct rig_loader *loader, const struct yaml_node *
 		else
 			first = rig->devices[i].name;
 	}
-	if (!first && rig->device_count > 0)
+	if (!first && rig->device_count > 0 && !had_faults)
 		rig_fault(loader, node, "no device says `under_test: yes`: exactly one must");
 }
 
@@ -119,6 +120,7 @@ int rig_devices_load(struct rig_loader *loader, const struct yaml_node *node)
 	rig->devices = arena_array(loader->arena, node->count + 1, sizeof *rig->devices);
 	if (!rig->devices)
 		return rig_no_memory(loader);
+	size_t before = faults_total(loader->faults);
 	if (node->count == 0)
 		rig_fault(loader, node, "a rig needs at least one device");
 	for (size_t i = 0; i < node->count; i++) {
@@ -129,7 +131,7 @@ int rig_devices_load(struct rig_loader *loader, const struct yaml_node *node)
 		load_device(loader, node->pairs[i].value, device);
 		rig->device_count++;
 	}
-	check_under_test(loader, node);
+	check_under_test(loader, node, faults_total(loader->faults) != before);
 	return 0;
 }
 
@@ -181,16 +183,18 @@ static void load_life(struct rig_loader *loader, const struct yaml_node *node, i
 static int load_watchdog(struct rig_loader *loader, const struct yaml_node *node,
                          struct rig_watchdog *watchdog)
 {
-	if (!bind_mapping(&loader->binder, &RIG_WATCHDOG_FIELDS, node, watchdog))
-		return 0;
-	watchdog->given = true;
+	const struct yaml_node *tripped = yaml_get(node, "tripped"), *arm = yaml_get(node, "arm"),
+	                       *clear = yaml_get(node, "clear");
+	watchdog->given = bind_mapping(&loader->binder, &RIG_WATCHDOG_FIELDS, node, watchdog);
 	loader->steps.allowed = 1u << STEP_SET | 1u << STEP_HOLD | 1u << STEP_AWAIT;
-	condition_load(&loader->steps, yaml_get(node, "tripped"), NULL, &watchdog->tripped);
-	if (steps_load(&loader->steps, yaml_get(node, "arm"), &watchdog->arm, &watchdog->arm_count,
-	               loader->reterr) < 0)
+	if (tripped)
+		condition_load(&loader->steps, tripped, NULL, &watchdog->tripped);
+	if (arm &&
+	    steps_load(&loader->steps, arm, &watchdog->arm, &watchdog->arm_count, loader->reterr) < 0)
 		return -1;
-	return steps_load(&loader->steps, yaml_get(node, "clear"), &watchdog->clear,
-	                  &watchdog->clear_count, loader->reterr);
+	return clear ? steps_load(&loader->steps, clear, &watchdog->clear, &watchdog->clear_count,
+	                          loader->reterr)
+	             : 0;
 }
 
 int rig_devices_finish(struct rig_loader *loader, const struct yaml_node *node)

@@ -123,10 +123,15 @@ static void load_command(struct rig_loader *loader, const struct yaml_node *node
 	}
 	if (!channel_value_load(&loader->steps, at, direction->command, &direction->at_value))
 		return;
+	char value[96], least[96], most[96];
 	if (direction->at_value == 0)
 		rig_fault(loader, at, "at: 0 has no sign to compare");
 	else if (direction->at_value < channel->least || direction->at_value > channel->most)
-		rig_fault(loader, at, "at: outside of the range that the command may have (`between`)");
+		rig_fault(
+		    loader, at, "at: %s is outside what the command may be: `between` is %s to %s",
+		    channel_value_text(rig, direction->command, direction->at_value, value, sizeof value),
+		    channel_value_text(rig, direction->command, channel->least, least, sizeof least),
+		    channel_value_text(rig, direction->command, channel->most, most, sizeof most));
 }
 
 static int load_agree(struct rig_loader *loader, const struct yaml_node *node,

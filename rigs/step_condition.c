@@ -73,10 +73,14 @@ static bool named_value(const struct step_context *context, const struct yaml_no
 	struct text all;
 	text_init(&all, 300);
 	for (size_t i = 0; i < info->name_count; i++)
-		text_printf(&all, "%s%s", i ? ", " : "", info->value_names[i]);
-	faults_add(context->faults, node->at, "'%s' is no value of %s%s%s%s: it has %s", node->text,
-	           info->name, nearest ? "; did you mean '" : "", nearest ? nearest : "",
-	           nearest ? "'?" : "", text_string(&all));
+		text_printf(&all, "%s%s",
+		            i == 0                     ? ""
+		            : i + 1 < info->name_count ? ", "
+		                                       : " or ",
+		            info->value_names[i]);
+	faults_add(context->faults, node->at, "'%s' is no value of %s, which can be %s%s%s%s",
+	           node->text, info->name, text_string(&all), nearest ? "; did you mean '" : "",
+	           nearest ? nearest : "", nearest ? "'?" : "");
 	text_release(&all);
 	return false;
 }

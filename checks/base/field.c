@@ -49,7 +49,12 @@ const char *field_bounds_text(const struct field *field, char *buffer, size_t si
 		               duration_text((int64_t)field->most, high, sizeof high));
 		return buffer;
 	}
-	if (field->kind == FIELD_QUANTITY && field->dimension && unit_default(*field->dimension)) {
+	if (field->kind == FIELD_QUANTITY && field->dimension &&
+	    dimension_agrees(*field->dimension, DIM_NUMBER)) { /* a share */
+		scale = unit_percent()->scale;
+		unit = unit_percent()->name;
+	} else if (field->kind == FIELD_QUANTITY && field->dimension &&
+	           unit_default(*field->dimension)) {
 		scale = unit_default(*field->dimension)->scale;
 		unit = unit_default(*field->dimension)->name;
 	}

@@ -319,7 +319,8 @@ static int refuse_unit(const char *what, const char *name, size_t length,
 	const char *nearest = text_nearest(text_string(&shown), names, UNIT_COUNT);
 	char buffer[96];
 	if (wanted)
-		(void)err_set(reterr, ERR_FILE, "%s '%s': expected a %s in %s", what, text_string(&shown),
+		(void)err_set(reterr, ERR_FILE, "%s '%s': expected %s %s in %s", what, text_string(&shown),
+		              text_article(dimension_name(*wanted, buffer, sizeof buffer)),
 		              dimension_name(*wanted, buffer, sizeof buffer), text_string(&fitting));
 	else
 		(void)err_set(reterr, ERR_FILE, "%s '%s'%s%s%s", what, text_string(&shown),

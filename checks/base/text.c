@@ -232,6 +232,11 @@ const char *text_nearest(const char *word, const char *const *candidates, size_t
 	return nearest;
 }
 
+const char *text_article(const char *word)
+{
+	return word[0] && strchr("aeioAEIO", word[0]) ? "an" : "a";
+}
+
 static bool is_letter(char c)
 {
 	return (c >= 'a' && c <= 'z') || (c >= 'A' && c <= 'Z');

@@ -54,6 +54,9 @@ size_t text_distance(const char *a, const char *b);
  */
 const char *text_nearest(const char *word, const char *const *candidates, size_t count);
 
+/* "a" or "an", as it stands before an English word. Static. */
+const char *text_article(const char *word);
+
 /* True for [A-Za-z][A-Za-z0-9_-]*, at most 64 bytes. */
 bool text_is_name(const char *bytes, size_t length);
 

@@ -50,7 +50,7 @@ bool yaml_bytes_check(const struct yaml_file *file, struct faults *faults)
 				faults_add(faults, at, "the byte 0x%02x is not UTF-8: save the file as UTF-8",
 				           (unsigned)(unsigned char)file->bytes[i]);
 			else
-				faults_add(faults, at, "U+%04X, %s", point, wrong);
+				faults_add(faults, at, "U+%04X is %s", point, wrong);
 			if (size == 0 && looks_like_utf16(file))
 				return false;
 			line_with_fault = at.line;

@@ -142,6 +142,10 @@ void yaml_explain(const struct yaml_problem *problem, struct faults *faults)
 			faults_add(faults, at, "'%c' cannot begin a value: put the value in quotes", c);
 		return;
 	}
+	if (starts_with(problem->problem, "did not find expected key") && character_at(&at) == ':') {
+		faults_add(faults, at, "a key is missing before this ':'");
+		return;
+	}
 	for (size_t i = 0; i < sizeof EXPLANATIONS / sizeof EXPLANATIONS[0]; i++) {
 		const struct explanation *row = &EXPLANATIONS[i];
 		if (!starts_with(problem->problem, row->problem) ||

@@ -96,10 +96,16 @@ static void refuse_properties(struct reader *reader, const yaml_event_t *event,
 		faults_add(reader->faults, at,
 		           "an anchor '&%s' is not allowed: write the value out where it is used",
 		           yaml_shown((const char *)anchor, strlen((const char *)anchor), shown));
-	if (tag)
-		faults_add(reader->faults, at,
-		           "a tag '%s' is not allowed: the key says what kind of value it takes",
-		           yaml_shown((const char *)tag, strlen((const char *)tag), shown));
+	if (!tag)
+		return;
+	static const char CORE[] = "tag:yaml.org,2002:"; /* what `!!` stands for */
+	const char *name = (const char *)tag;
+	bool core = strncmp(name, CORE, sizeof CORE - 1) == 0;
+	if (core)
+		name += sizeof CORE - 1;
+	faults_add(reader->faults, at,
+	           "a tag '%s%s' is not allowed: the key says what kind of value it takes",
+	           core ? "!!" : "", yaml_shown(name, strlen(name), shown));
 }
 
 static struct yaml_node *new_node(struct reader *reader, enum yaml_kind kind, yaml_mark_t mark)
