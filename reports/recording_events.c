@@ -380,7 +380,7 @@ static int on_step(struct reading *reading, struct event *event, struct err *ret
 {
 	(void)reading;
 	(void)reterr;
-	if (event->state->in_stimulus)
+	if (event->recorded && event->state->in_stimulus)
 		event->state->last_line = (int)get_integer(event->line, "line", 0);
 	return 0;
 }
@@ -513,6 +513,8 @@ static bool find_condition(const struct reading *reading, const struct event *ev
 static int on_condition(struct reading *reading, struct event *event, struct err *reterr)
 {
 	struct recorded_test *recorded = event->recorded;
+	if (!recorded)
+		return 0; /* of the way to rest, which passes it over */
 	int line = (int)get_integer(event->line, "line", 0);
 	bool of_rig = event->kind == JOURNAL_PRECONDITION || event->test->bench;
 	if (!get_interval(event->line, &recorded->condition_begin_ns, &recorded->condition_end_ns))
@@ -576,11 +578,11 @@ static const struct {
     [JOURNAL_TEST_BEGIN] = {on_test_begin, NEEDS_TEST},
     [JOURNAL_BLOCK] = {on_block, NEEDS_BEGUN_TEST},
     [JOURNAL_STIMULUS] = {on_stimulus, NEEDS_BEGUN_TEST},
-    [JOURNAL_STEP] = {on_step, NEEDS_BEGUN_TEST},
+    [JOURNAL_STEP] = {on_step, MAY_HAVE_TEST},
     [JOURNAL_COMMAND] = {on_command, MAY_HAVE_TEST},
     [JOURNAL_MARK] = {on_mark, NEEDS_BEGUN_TEST},
     [JOURNAL_ATTEMPT] = {on_attempt, NEEDS_BEGUN_TEST},
-    [JOURNAL_AWAIT_EXPIRED] = {on_condition, NEEDS_BEGUN_TEST},
+    [JOURNAL_AWAIT_EXPIRED] = {on_condition, MAY_HAVE_TEST},
     [JOURNAL_PRECONDITION] = {on_condition, NEEDS_BEGUN_TEST},
     [JOURNAL_STIMULUS_END] = {on_stimulus_end, NEEDS_BEGUN_TEST},
     [JOURNAL_TEST_END] = {on_test_end, NEEDS_BEGUN_TEST},

@@ -24,10 +24,20 @@ static void soonest(int64_t *due_ns, int64_t at_ns)
 		*due_ns = at_ns;
 }
 
-static void tell_command(struct conductor *conductor, const struct command_op *op,
-                         enum progress progress, int64_t now_ns)
+/* What the way to rest does belongs to no test: its commands and waits are not the stimulus. */
+static struct journal_event step_event(const struct conductor *conductor, enum journal_kind kind,
+                                       bool resting, int64_t now_ns)
 {
-	struct journal_event event = conductor_event(conductor, JOURNAL_COMMAND, now_ns);
+	struct journal_event event = conductor_event(conductor, kind, now_ns);
+	if (resting)
+		event.suite = event.test = -1;
+	return event;
+}
+
+static void tell_command(struct conductor *conductor, const struct command_op *op,
+                         enum progress progress, bool resting, int64_t now_ns)
+{
+	struct journal_event event = step_event(conductor, JOURNAL_COMMAND, resting, now_ns);
 	const struct rig_channel *channel = &conductor->rig->channels[op->channel];
 	event.channel = op->channel;
 	event.device = channel->device;
@@ -81,7 +91,7 @@ static enum progress set_tick(struct conductor *conductor, struct walk *walk, bo
 		enum progress progress = command_tick(conductor, op, resting, now_ns, due_ns);
 		if (progress == PROGRESS_RUNNING)
 			return PROGRESS_RUNNING;
-		tell_command(conductor, op, progress, now_ns);
+		tell_command(conductor, op, progress, resting, now_ns);
 		if (progress == PROGRESS_FAILED) {
 			if (!resting) {
 				(void)snprintf(walk->why, sizeof walk->why, "%s", op->why);
@@ -173,7 +183,7 @@ static enum progress one_ramp(struct conductor *conductor, struct ramp_op *ramp,
 	if (progress == PROGRESS_RUNNING)
 		return PROGRESS_RUNNING;
 	ramp->commanding = false;
-	tell_command(conductor, &ramp->command, progress, now_ns);
+	tell_command(conductor, &ramp->command, progress, false, now_ns);
 	if (progress == PROGRESS_FAILED)
 		return PROGRESS_FAILED;
 	conductor->commanded[ramp->channel] = ramp->command.value;
@@ -230,9 +240,10 @@ static void await_begin(struct conductor *conductor, struct walk *walk, int64_t 
 	walk->due_ns = now_ns + walk->step->timeout_ns;
 }
 
-static void tell_expired(struct conductor *conductor, const struct walk *walk, int64_t now_ns)
+static void tell_expired(struct conductor *conductor, const struct walk *walk, bool resting,
+                         int64_t now_ns)
 {
-	struct journal_event event = conductor_event(conductor, JOURNAL_AWAIT_EXPIRED, now_ns);
+	struct journal_event event = step_event(conductor, JOURNAL_AWAIT_EXPIRED, resting, now_ns);
 	event.channel = walk->step->condition.channel;
 	event.condition = &walk->step->condition;
 	event.line = walk->step->at.line;
@@ -278,8 +289,7 @@ static enum progress await_tick(struct conductor *conductor, struct walk *walk, 
 	else
 		(void)snprintf(walk->why + length, sizeof walk->why - length, "; %s was last %.6g %s",
 		               info->name, watch.value, info->unit->name);
-	(void)resting;
-	tell_expired(conductor, walk, now_ns);
+	tell_expired(conductor, walk, resting, now_ns);
 	return PROGRESS_FAILED;
 }
 
@@ -496,9 +506,8 @@ static void begin_step(struct conductor *conductor, struct walk *walk, bool rest
 	walk->begin_ns = now_ns;
 	walk->mark_earliest_ns = walk->mark_latest_ns = now_ns;
 	walk->why[0] = '\0';
-	struct journal_event event = conductor_event(conductor, JOURNAL_STEP, now_ns);
+	struct journal_event event = step_event(conductor, JOURNAL_STEP, resting, now_ns);
 	event.line = walk->step->at.line;
-	event.status = resting;
 	(void)step_text(walk->step, conductor->rig, event.text, sizeof event.text);
 	conductor_tell(conductor, &event);
 	(void)pthread_mutex_lock(&conductor->mutex);
