@@ -283,16 +283,14 @@ static void a_counter_that_stands_at_the_end_makes_the_end_bad(void **state)
 static void rows_of_another_block_are_bad_by_time(void **state)
 {
 	struct fixture *f = *state;
-	static struct row lives[50];
 	int life_channels[1] = {LIFE};
-	for (int i = 0; i < 50; i++)
-		lives[i] = (struct row){i * 10 * STEP_NS, i * 10 * STEP_NS + NS_PER_MS, {0, 0}};
 	struct life_row {
 		int64_t sent, received;
 		double value;
 	} rows[50];
 	for (int i = 0; i < 50; i++)
-		rows[i] = (struct life_row){lives[i].sent, lives[i].received, i < 20 ? i : 20};
+		rows[i] =
+		    (struct life_row){i * 10 * STEP_NS, i * 10 * STEP_NS + NS_PER_MS, i < 20 ? i : 20};
 	f->block_channels[1] = TORQUE;
 	f->blocks[1] = (struct recorded_block){.channels = life_channels,
 	                                       .channel_count = 1,
