@@ -75,7 +75,7 @@ void transducer_latch(struct transducer *transducer, const struct plant *plant, 
 	                              transducer->torque_offset_nm +
 	                              transducer->torque_noise_nm * noise_normal(&transducer->noise);
 	transducer->shown_speed_rad_s =
-	    transducer->speed_gain * plant->speed_rad_s +
+	    transducer->speed_gain * plant->load_speed_rad_s +
 	    transducer->speed_noise_rad_s * noise_normal(&transducer->noise);
 	transducer->life = life;
 }

@@ -69,16 +69,29 @@ static int check_parameters(const struct model_config *config, struct err *reter
 			return err_set(reterr, ERR_FILE, "%s of the model must be %s", field->key,
 			               field_bounds_text(field, bounds, sizeof bounds));
 	}
-	/* A step must resolve the quickest lags: the windings' and the DC link's. */
-	double parts = ceil(config->control_period_s / config->integration_step_s - 1e-9);
-	double step = config->control_period_s / parts;
-	double winding = fmin(config->inductance_d_h, config->inductance_q_h) / config->resistance_ohm;
-	double link = config->source_resistance_ohm * config->dc_capacitance_f;
+	return 0;
+}
+
+/* A step must resolve the quickest lags and the swinging of the shaft. */
+static int check_step(const struct model_config *c, struct err *reterr)
+{
+	double step = c->control_period_s / ceil(c->control_period_s / c->integration_step_s - 1e-9);
+	double winding = fmin(c->inductance_d_h, c->inductance_q_h) / c->resistance_ohm;
+	double link = c->source_resistance_ohm * c->dc_capacitance_f;
 	if (step > winding || step > link)
 		return err_set(reterr, ERR_FILE,
 		               "integration_step must be below L/R (%.3g ms) and source_resistance times "
 		               "dc_capacitance (%.3g ms)",
 		               winding * 1e3, link * 1e3);
+	double motor_j = c->inertia_kgm2 - c->load_inertia_kgm2;
+	double inverse = 1 / motor_j + 1 / c->load_inertia_kgm2;
+	double swing = sqrt(c->shaft_stiffness_nm_rad * inverse);
+	if (step * swing > 1 || step * c->shaft_damping_nms * inverse > 1)
+		return err_set(
+		    reterr, ERR_FILE,
+		    "integration_step must be below 1/(natural frequency of the shaft) = %.3g us; "
+		    "make it shorter, or shaft_stiffness and shaft_damping smaller",
+		    1e6 / fmax(swing, c->shaft_damping_nms * inverse));
 	return 0;
 }
 
@@ -96,6 +109,8 @@ static void init_plant(struct model *model)
 	plant->viscous_nms = c->viscous_nms;
 	plant->coulomb_nm = c->coulomb_nm;
 	plant->motor_friction_share = 0.2;
+	plant->stiffness_nm_rad = c->shaft_stiffness_nm_rad;
+	plant->damping_nms = c->shaft_damping_nms;
 	plant->capacitance_f = c->dc_capacitance_f;
 	plant->source_resistance_ohm = c->source_resistance_ohm;
 	plant->chopper_ohm = c->chopper_resistance_ohm;
@@ -224,7 +239,7 @@ static void latch(struct model *model)
 	uint16_t life = (uint16_t)(model->grid_ns / NS_PER_MS);
 	transducer_latch(&model->transducer, &model->plant, life);
 	analyser_latch(&model->analyser, &model->plant, life);
-	load_latch(&model->load, model->plant.speed_rad_s, life);
+	load_latch(&model->load, model->plant.load_speed_rad_s, life);
 	model->next_millisecond_ns += model->millisecond_ns;
 }
 
@@ -274,7 +289,8 @@ int model_new(const struct model_config *config, struct model **ret_model, struc
 {
 	*ret_model = NULL;
 	struct model_config filled = *config;
-	if (check_parameters(&filled, reterr) < 0 || fill_from_nameplate(&filled, reterr) < 0)
+	if (check_parameters(&filled, reterr) < 0 || fill_from_nameplate(&filled, reterr) < 0 ||
+	    check_step(&filled, reterr) < 0)
 		return -1;
 	struct model *model = calloc(1, sizeof *model);
 	if (!model)

@@ -53,6 +53,7 @@ struct model_config {
 	double rated_speed_rad_s, rated_torque_nm, rated_current_a;
 	/* parameters, by model_parameters() */
 	double resistance_ohm, inertia_kgm2, load_inertia_kgm2, viscous_nms, coulomb_nm;
+	double shaft_stiffness_nm_rad, shaft_damping_nms; /* stiffness 0: rigid */
 	double dc_voltage_v, dc_capacitance_f, source_resistance_ohm, chopper_resistance_ohm;
 	double thermal_resistance_kw, thermal_capacitance_jk;
 	double control_period_s, switching_period_s, integration_step_s, dead_time_s;

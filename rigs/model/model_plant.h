@@ -12,6 +12,10 @@
  *   J dw/dt = T - load - viscous w - coulomb sign(w)
  *   C dv/dt = supply current - converter current - chopper current - bleeder current
  *
+ * With a stiffness the shaft is two masses on a spring with damping, motor and load machine; the
+ * friction is shared between them by motor_friction_share. An open phase carries no current: its
+ * terminal then takes whatever voltage keeps it at zero.
+ *
  * The converter is averaged over its switching period: in a step it puts
  * duty vector times DC voltage on the windings, standing in the stator frame.
  * With the pulses off the windings feed back through the diodes until they
@@ -31,6 +35,7 @@ struct plant {
 	double flux_wb, ld_h, lq_h, resistance_20_ohm; /* resistance at 20 degC */
 	double inertia_kgm2, load_inertia_kgm2;        /* total, and the load machine's part of it */
 	double viscous_nms, coulomb_nm, motor_friction_share;
+	double stiffness_nm_rad, damping_nms; /* of the shaft; stiffness 0: rigid */
 	double capacitance_f, source_resistance_ohm, chopper_ohm, bleeder_ohm;
 	double chopper_on_v, chopper_off_v;
 	double thermal_resistance_kw, thermal_capacitance_jk, ambient_c;
@@ -38,11 +43,12 @@ struct plant {
 	/* what holds during a step */
 	double supply_v;
 	double duty_alpha, duty_beta; /* voltage vector / DC voltage */
-	bool pulses_on, chopper_closed;
+	bool pulses_on, chopper_closed, phase_a_open;
 	const struct load_machine *load;
 
 	/* state */
 	double current_d_a, current_q_a, speed_rad_s, angle_rad, dc_v; /* angle in [0, 2 pi) */
+	double load_speed_rad_s, twist_rad; /* equal to speed_rad_s and 0 where the shaft is rigid */
 	int64_t turns;
 	double winding_c, resistance_ohm;
 	bool blocked; /* pulses off and no current flows */

@@ -26,10 +26,17 @@
 #define DIODE_ZERO_A   0.02
 /* Coulomb friction grows linearly up to this speed: half a revolution a minute. */
 #define STICK_RAD_S  0.05
+#define OPEN_PHASE_S 1e-4    /* in which the current of an opened phase dies away */
 #define COPPER_PER_K 0.00393 /* temperature coefficient of copper at 20 degC, common practice */
 
 struct state {
-	double id, iq, w, angle, v;
+	double id, iq, w, angle, v, load_w, twist;
+};
+
+/* What is the same in every stage of a step. */
+struct constants {
+	double start_angle, p, inv_ld, inv_lq, inv_j, inv_load_j, inv_c, supply_s,
+	    resistors_s; /* conductances */
 };
 
 struct slope {
@@ -49,60 +56,110 @@ double plant_friction(const struct plant *plant, double speed_rad_s)
 	return friction_at(plant, speed_rad_s);
 }
 
-/* Duty vector in rotor coordinates; of the diodes where the pulses are off. */
-static inline void duties_dq(const struct plant *plant, const struct state *x, double turned_elec,
-                             double *ret_d, double *ret_q)
+/* Cosine and sine of the rotor frame, turned by a small angle since the start of the step. */
+static inline void frame_at(const struct plant *plant, double t, double *ret_c, double *ret_s)
 {
-	if (!plant->pulses_on) {
-		double current = sqrt(x->id * x->id + x->iq * x->iq);
-		double share = -DIODE_SHARE / (current > DIODE_SMOOTH_A ? current : DIODE_SMOOTH_A);
-		*ret_d = share * x->id;
-		*ret_q = share * x->iq;
-		return;
-	}
-	double t = turned_elec, t2 = t * t;
-	double ds = t * (1 - t2 / 6 * (1 - t2 / 20 * (1 - t2 / 42)));
-	double dc = 1 - t2 / 2 * (1 - t2 / 12 * (1 - t2 / 30 * (1 - t2 / 56)));
-	double c = plant->cos_elec * dc - plant->sin_elec * ds;
-	double s = plant->sin_elec * dc + plant->cos_elec * ds;
-	*ret_d = plant->duty_alpha * c + plant->duty_beta * s;
-	*ret_q = plant->duty_beta * c - plant->duty_alpha * s;
+	double t2 = t * t;
+	double ds = t * (1 - t2 * (1. / 6) * (1 - t2 * (1. / 20) * (1 - t2 * (1. / 42))));
+	double dc = 1 - t2 * 0.5 * (1 - t2 * (1. / 12) * (1 - t2 * (1. / 30) * (1 - t2 * (1. / 56))));
+	*ret_c = plant->cos_elec * dc - plant->sin_elec * ds;
+	*ret_s = plant->sin_elec * dc + plant->cos_elec * ds;
 }
 
-static inline void slope_at(const struct plant *plant, const struct state *x, double start_angle,
-                            double p, double inv_ld, double inv_lq, double inv_j, double inv_c,
-                            struct slope *k)
+/* Duty vector of conducting diodes: against the current. */
+static inline void diodes(const struct state *x, double *ret_d, double *ret_q)
 {
-	double md, mq;
-	duties_dq(plant, x, p * (x->angle - start_angle), &md, &mq);
-	double we = p * x->w;
-	double torque = 1.5 * p * (plant->flux_wb + (plant->ld_h - plant->lq_h) * x->id) * x->iq;
-	double load = load_at(plant->load, x->w);
-	double friction = friction_at(plant, x->w);
+	double current = sqrt(x->id * x->id + x->iq * x->iq);
+	double share = -DIODE_SHARE / (current > DIODE_SMOOTH_A ? current : DIODE_SMOOTH_A);
+	*ret_d = share * x->id;
+	*ret_q = share * x->iq;
+}
+
+/*
+ * Phase a is open: its terminal takes the voltage along alpha that lets the
+ * alpha current (the phase's own) die away and stay at zero.
+ */
+static inline void open_phase(const struct constants *k, const struct state *x, double c, double s,
+                              struct state *d)
+{
+	double alpha = x->id * c - x->iq * s, beta = x->id * s + x->iq * c;
+	double rate = d->id * c - d->iq * s - k->p * x->w * beta;
+	double reach = c * c * k->inv_ld + s * s * k->inv_lq;
+	double voltage = (-alpha / OPEN_PHASE_S - rate) / reach;
+	d->id += c * voltage * k->inv_ld;
+	d->iq -= s * voltage * k->inv_lq;
+}
+
+static inline __attribute__((always_inline)) void electrical(const struct plant *plant,
+                                                             const struct constants *k,
+                                                             const struct state *x,
+                                                             struct slope *slope)
+{
+	double md, mq, c, s, we = k->p * x->w;
+	frame_at(plant, k->p * (x->angle - k->start_angle), &c, &s);
+	if (plant->pulses_on) {
+		md = plant->duty_alpha * c + plant->duty_beta * s;
+		mq = plant->duty_beta * c - plant->duty_alpha * s;
+	} else {
+		diodes(x, &md, &mq);
+	}
+	slope->d.id =
+	    (md * x->v - plant->resistance_ohm * x->id + we * plant->lq_h * x->iq) * k->inv_ld;
+	slope->d.iq =
+	    (mq * x->v - plant->resistance_ohm * x->iq - we * (plant->ld_h * x->id + plant->flux_wb)) *
+	    k->inv_lq;
+	if (plant->blocked)
+		slope->d.id = slope->d.iq = 0;
+	else if (plant->phase_a_open)
+		open_phase(k, x, c, s, &slope->d);
+
 	double converter = 1.5 * (md * x->id + mq * x->iq);
 	double supply =
 	    plant->supply_v > x->v ? (plant->supply_v - x->v) / plant->source_resistance_ohm : 0;
 	double resistors = x->v / plant->bleeder_ohm;
 	if (plant->chopper_closed)
 		resistors += x->v / plant->chopper_ohm;
-
-	if (plant->blocked) {
-		k->d.id = k->d.iq = 0;
-	} else {
-		k->d.id = (md * x->v - plant->resistance_ohm * x->id + we * plant->lq_h * x->iq) * inv_ld;
-		k->d.iq = (mq * x->v - plant->resistance_ohm * x->iq -
-		           we * (plant->ld_h * x->id + plant->flux_wb)) *
-		          inv_lq;
-	}
-	k->d.w = (torque - load - friction) * inv_j;
-	k->d.angle = x->w;
-	k->d.v = (supply - converter - resistors) * inv_c;
+	slope->d.v = (supply - converter - resistors) * k->inv_c;
 	/* Counted behind the source resistance: what reaches the capacitor. */
-	k->supply = supply * x->v;
-	k->copper = 1.5 * plant->resistance_ohm * (x->id * x->id + x->iq * x->iq);
-	k->friction = friction * x->w;
-	k->load = load * x->w;
-	k->resistors = resistors * x->v;
+	slope->supply = supply * x->v;
+	slope->resistors = resistors * x->v;
+	slope->copper = 1.5 * plant->resistance_ohm * (x->id * x->id + x->iq * x->iq);
+}
+
+static inline __attribute__((always_inline)) void mechanical(const struct plant *plant,
+                                                             const struct constants *k,
+                                                             const struct state *x,
+                                                             struct slope *slope)
+{
+	double torque = 1.5 * k->p * (plant->flux_wb + (plant->ld_h - plant->lq_h) * x->id) * x->iq;
+	slope->d.angle = x->w;
+	if (plant->stiffness_nm_rad > 0) {
+		double load = load_at(plant->load, x->load_w);
+		double at_motor = plant->motor_friction_share * friction_at(plant, x->w);
+		double at_load = (1 - plant->motor_friction_share) * friction_at(plant, x->load_w);
+		double slip = x->w - x->load_w;
+		double shaft = plant->stiffness_nm_rad * x->twist + plant->damping_nms * slip;
+		slope->d.w = (torque - at_motor - shaft) * k->inv_j;
+		slope->d.load_w = (shaft - load - at_load) * k->inv_load_j;
+		slope->d.twist = slip;
+		slope->friction = at_motor * x->w + at_load * x->load_w + plant->damping_nms * slip * slip;
+		slope->load = load * x->load_w;
+		return;
+	}
+	double load = load_at(plant->load, x->w), friction = friction_at(plant, x->w);
+	slope->d.w = slope->d.load_w = (torque - load - friction) * k->inv_j;
+	slope->d.twist = 0;
+	slope->friction = friction * x->w;
+	slope->load = load * x->w;
+}
+
+static inline __attribute__((always_inline)) void slope_at(const struct plant *plant,
+                                                           const struct constants *k,
+                                                           const struct state *x,
+                                                           struct slope *slope)
+{
+	electrical(plant, k, x, slope);
+	mechanical(plant, k, x, slope);
 }
 
 static inline struct state moved(const struct state *x, const struct slope *k, double h)
@@ -113,6 +170,8 @@ static inline struct state moved(const struct state *x, const struct slope *k, d
 	    .w = x->w + h * k->d.w,
 	    .angle = x->angle + h * k->d.angle,
 	    .v = x->v + h * k->d.v,
+	    .load_w = x->load_w + h * k->d.load_w,
+	    .twist = x->twist + h * k->d.twist,
 	};
 }
 
@@ -123,25 +182,42 @@ static inline double weighed(double h, double k1, double k2, double k3, double k
 
 static void runge_kutta(struct plant *plant, double h)
 {
-	struct state x = {plant->current_d_a, plant->current_q_a, plant->speed_rad_s, plant->angle_rad,
-	                  plant->dc_v};
-	double p = plant->pole_pairs, start = x.angle;
-	double inv_ld = 1 / plant->ld_h, inv_lq = 1 / plant->lq_h;
-	double inv_j = 1 / plant->inertia_kgm2, inv_c = 1 / plant->capacitance_f;
+	bool rigid = plant->stiffness_nm_rad <= 0;
+	struct state x = {plant->current_d_a, plant->current_q_a, plant->speed_rad_s,
+	                  plant->angle_rad,   plant->dc_v,        plant->load_speed_rad_s,
+	                  plant->twist_rad};
+	struct constants k = {
+	    .start_angle = plant->angle_rad,
+	    .p = plant->pole_pairs,
+	    .inv_ld = 1 / plant->ld_h,
+	    .inv_lq = 1 / plant->lq_h,
+	    .inv_j = 1 / (rigid ? plant->inertia_kgm2 : plant->inertia_kgm2 - plant->load_inertia_kgm2),
+	    .inv_load_j = 1 / plant->load_inertia_kgm2,
+	    .inv_c = 1 / plant->capacitance_f,
+	    .supply_s = 1 / plant->source_resistance_ohm,
+	    .resistors_s =
+	        1 / plant->bleeder_ohm + (plant->chopper_closed ? 1 / plant->chopper_ohm : 0),
+	};
 	struct slope k1, k2, k3, k4;
-	slope_at(plant, &x, start, p, inv_ld, inv_lq, inv_j, inv_c, &k1);
+	slope_at(plant, &k, &x, &k1);
 	struct state y = moved(&x, &k1, h / 2);
-	slope_at(plant, &y, start, p, inv_ld, inv_lq, inv_j, inv_c, &k2);
+	slope_at(plant, &k, &y, &k2);
 	y = moved(&x, &k2, h / 2);
-	slope_at(plant, &y, start, p, inv_ld, inv_lq, inv_j, inv_c, &k3);
+	slope_at(plant, &k, &y, &k3);
 	y = moved(&x, &k3, h);
-	slope_at(plant, &y, start, p, inv_ld, inv_lq, inv_j, inv_c, &k4);
+	slope_at(plant, &k, &y, &k4);
 
 	plant->current_d_a += weighed(h, k1.d.id, k2.d.id, k3.d.id, k4.d.id);
 	plant->current_q_a += weighed(h, k1.d.iq, k2.d.iq, k3.d.iq, k4.d.iq);
 	plant->speed_rad_s += weighed(h, k1.d.w, k2.d.w, k3.d.w, k4.d.w);
 	plant->angle_rad += weighed(h, k1.d.angle, k2.d.angle, k3.d.angle, k4.d.angle);
 	plant->dc_v += weighed(h, k1.d.v, k2.d.v, k3.d.v, k4.d.v);
+	if (rigid) {
+		plant->load_speed_rad_s = plant->speed_rad_s;
+	} else {
+		plant->load_speed_rad_s += weighed(h, k1.d.load_w, k2.d.load_w, k3.d.load_w, k4.d.load_w);
+		plant->twist_rad += weighed(h, k1.d.twist, k2.d.twist, k3.d.twist, k4.d.twist);
+	}
 	struct plant_energies *e = &plant->energies;
 	e->supply += weighed(h, k1.supply, k2.supply, k3.supply, k4.supply);
 	e->copper += weighed(h, k1.copper, k2.copper, k3.copper, k4.copper);
@@ -213,6 +289,7 @@ void plant_start(struct plant *plant)
 {
 	plant->resistance_ohm = plant->resistance_20_ohm * (1 + COPPER_PER_K * (plant->winding_c - 20));
 	plant->blocked = true;
+	plant->load_speed_rad_s = plant->speed_rad_s;
 	turn_rotor_frame(plant);
 	derive(plant);
 }
@@ -234,6 +311,12 @@ void plant_step(struct plant *plant, double h_s, int parts)
 		}
 	}
 	derive(plant);
+	if (plant->stiffness_nm_rad > 0) {
+		plant->shaft_torque_nm =
+		    plant->stiffness_nm_rad * plant->twist_rad +
+		    plant->damping_nms * (plant->speed_rad_s - plant->load_speed_rad_s);
+		return;
+	}
 	double friction = friction_at(plant, plant->speed_rad_s);
 	plant->shaft_torque_nm = load_at(plant->load, plant->speed_rad_s) +
 	                         (1 - plant->motor_friction_share) * friction +
@@ -249,8 +332,11 @@ void plant_heat(struct plant *plant, double h_s, double copper_j)
 
 double plant_stored(const struct plant *plant)
 {
+	double motor_j = plant->inertia_kgm2 - plant->load_inertia_kgm2;
 	return 0.5 * plant->capacitance_f * plant->dc_v * plant->dc_v +
-	       0.5 * plant->inertia_kgm2 * plant->speed_rad_s * plant->speed_rad_s +
+	       0.5 * motor_j * plant->speed_rad_s * plant->speed_rad_s +
+	       0.5 * plant->load_inertia_kgm2 * plant->load_speed_rad_s * plant->load_speed_rad_s +
+	       0.5 * plant->stiffness_nm_rad * plant->twist_rad * plant->twist_rad +
 	       0.75 * (plant->ld_h * plant->current_d_a * plant->current_d_a +
 	               plant->lq_h * plant->current_q_a * plant->current_q_a);
 }
