@@ -125,7 +125,7 @@ static int judge_check(struct judging *j, struct arena *scratch, const struct ch
 static double margin(const struct metric *metric, const struct limit *limit)
 {
 	if (metric->kind->shape == METRIC_YES_NO)
-		return INFINITY;
+		return HUGE_VAL;
 	double left = fmin(limit->max - metric->high, metric->low - limit->min);
 	double size = fmax(isfinite(limit->max) ? fabs(limit->max) : 0,
 	                   isfinite(limit->min) ? fabs(limit->min) : 0);
@@ -137,7 +137,7 @@ static void conclude_limits(struct test_result *result)
 {
 	const struct limit_result *worst = NULL, *nearest = NULL;
 	size_t total = 0, same = 0;
-	double nearest_margin = INFINITY;
+	double nearest_margin = HUGE_VAL;
 	for (size_t c = 0; c < result->check_count; c++)
 		for (size_t m = 0; m < result->checks[c].metric_count; m++) {
 			const struct metric_result *metric = &result->checks[c].metrics[m];

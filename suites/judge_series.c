@@ -332,7 +332,7 @@ void judge_await(const struct rig *rig, const struct series *s, const struct con
 		               what, waited, why);
 		return;
 	}
-	double least = INFINITY, most = -INFINITY;
+	double least = HUGE_VAL, most = -HUGE_VAL;
 	int64_t held_ns = longest_held(s, condition, first, last, &least, &most);
 	if (held_ns >= 0 && held_ns >= condition->for_ns) {
 		(void)snprintf(ret->reason, sizeof ret->reason,

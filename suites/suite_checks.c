@@ -227,10 +227,10 @@ static void store_absent(const struct field *field, void *target)
 		*(int *)target = -1;
 		return;
 	case FIELD_LEVEL:
-		*(double *)target = NAN;
+		*(double *)target = (double)NAN;
 		return;
 	case FIELD_LEVELS:
-		((double *)target)[0] = ((double *)target)[1] = NAN;
+		((double *)target)[0] = ((double *)target)[1] = (double)NAN;
 		return;
 	case FIELD_WINDOW:
 		*(struct window *)target = (struct window){.from = -1};

@@ -194,7 +194,7 @@ static void limit_load(struct loading *l, const struct yaml_node *mapping, size_
 {
 	const struct metric_kind *metric = &use->kind->metrics[row];
 	struct limit_file file = {.decision = (int)l->rule};
-	struct limit limit = {.metric = (int)row, .min = -INFINITY, .max = INFINITY};
+	struct limit limit = {.metric = (int)row, .min = -HUGE_VAL, .max = HUGE_VAL};
 	if (!bind_mapping_beside(&l->binder, &LIMIT_TABLE, metric->options, mapping, &file))
 		return;
 	if (metric->options) {

@@ -215,10 +215,10 @@ static void an_emptied_recording_never_passes(void **state)
 static void nan_never_passes(void **state)
 {
 	struct fixture *f = *state;
-	f->rows[250].values[0] = NAN;
+	f->rows[250].values[0] = (double)NAN;
 	assert_int_equal(judged(f), VERDICT_INCONCLUSIVE);
 	for (int i = 0; i < ROWS; i++)
-		f->rows[i].values[0] = NAN;
+		f->rows[i].values[0] = (double)NAN;
 	assert_int_equal(judged(f), VERDICT_INCONCLUSIVE);
 }
 
@@ -235,7 +235,7 @@ static void a_life_counter_of_nan_proves_nothing(void **state)
 {
 	struct fixture *f = *state;
 	for (int i = 0; i < ROWS; i++)
-		f->rows[i].values[1] = NAN;
+		f->rows[i].values[1] = (double)NAN;
 	assert_int_equal(judged(f), VERDICT_INCONCLUSIVE);
 }
 
@@ -365,7 +365,7 @@ static void an_expired_await_is_an_error_where_samples_are_missing(void **state)
 {
 	struct fixture *f = *state;
 	await_of(f, 150, 0);
-	f->rows[200].values[0] = NAN;
+	f->rows[200].values[0] = (double)NAN;
 	assert_int_equal(judged(f), VERDICT_ERROR);
 	f->rows[200].values[0] = 100;
 	for (int i = 200; i < ROWS; i++) { /* a gap of 100 ms */

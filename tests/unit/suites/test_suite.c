@@ -154,7 +154,7 @@ static void options_of_a_limit_reach_the_parameters(void **state)
 	const double FROM[] = {0.2, 0.1}, BAND[] = {0.05, 0.02};
 	for (size_t i = 0; i < 2; i++) {
 		const struct check_use *use = &test_named(f, NAMES[i])->checks[0];
-		double from = NAN, band = NAN;
+		double from = (double)NAN, band = (double)NAN;
 		for (size_t m = 0; m < use->kind->metric_count; m++) {
 			const struct metric_kind *metric = &use->kind->metrics[m];
 			if (strcmp(metric->name, "rise_time") == 0)
