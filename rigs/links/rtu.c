@@ -200,10 +200,9 @@ static enum link_status send_request(struct rtu_link *rtu, struct link_reply *re
 	return modbus_send_raw_request(rtu->port, raw, length) < 0 ? lost(rtu, reply) : LINK_OK;
 }
 
-/* Whether the bytes so far end with their own CRC. */
-static bool crc_fits(const struct rtu_link *rtu)
+/* Whether the first `length` bytes end with their own CRC. */
+static bool crc_fits(const struct rtu_link *rtu, size_t length)
 {
-	size_t length = rtu->frame_length;
 	if (length < 1 + 1 + CRC_BYTES)
 		return false;
 	uint16_t crc = pdu_crc(rtu->frame, length - CRC_BYTES);
@@ -218,17 +217,17 @@ static bool is_echo(const struct rtu_link *rtu)
 	       memcmp(rtu->frame + 1, pdu, (size_t)length) == 0;
 }
 
-/* Judges a frame that has ended. */
-static enum link_status take_frame(struct rtu_link *rtu, struct link_reply *reply)
+/* Judges a frame that has ended after `length` bytes. */
+static enum link_status take_frame(struct rtu_link *rtu, size_t length, struct link_reply *reply)
 {
-	if (!crc_fits(rtu))
+	if (!crc_fits(rtu, length))
 		return reply_set(reply, LINK_GARBLED, "%zu bytes whose checksum does not fit%s",
 		                 rtu->frame_length,
 		                 is_echo(rtu) ? "; the adapter echoes what is sent" : "");
 	if (rtu->frame[0] != rtu->request.unit)
 		return reply_set(reply, LINK_GARBLED, "unit %u answered for unit %u", rtu->frame[0],
 		                 rtu->request.unit);
-	pdu_parse(&rtu->request, rtu->frame + 1, rtu->frame_length - 1 - CRC_BYTES, reply);
+	pdu_parse(&rtu->request, rtu->frame + 1, length - 1 - CRC_BYTES, reply);
 	return reply->status;
 }
 
@@ -261,8 +260,7 @@ static enum link_status receive_reply(struct rtu_link *rtu, struct link_reply *r
 		if (length > 0 && rtu->frame_length >= (size_t)length) {
 			if (rtu->frame_length > (size_t)length) /* more than one frame: be wary */
 				rtu->quiet_from_ns = waiting_now() + quiet_ns(rtu);
-			rtu->frame_length = (size_t)length;
-			return take_frame(rtu, reply);
+			return take_frame(rtu, (size_t)length, reply);
 		}
 		if (rtu->frame_length > ADU_MOST)
 			return reply_set(reply, LINK_GARBLED, "more bytes than a frame has");
@@ -280,7 +278,7 @@ static enum link_status receive_reply(struct rtu_link *rtu, struct link_reply *r
 			rtu->frame_length += (size_t)got;
 			break;
 		case WAITED_TIMEOUT:
-			return by_silence ? take_frame(rtu, reply) : timed_out(rtu, reply);
+			return by_silence ? take_frame(rtu, rtu->frame_length, reply) : timed_out(rtu, reply);
 		case WAITED_STOPPED:
 			return stopped(reply);
 		case WAITED_FAILED:
