@@ -1,6 +1,13 @@
 /* SPDX-License-Identifier: Apache-2.0 */
-/* Field tables; the evaluation is not there yet and says so. */
-#include "check.h"
+/*
+ * Whether channels have the sign of a command: the proof of direction before
+ * anything is loaded. By means with their uncertainty, because a torque near
+ * its ripple changes sign from sample to sample.
+ */
+#include <stdio.h>
+
+#include "put.h"
+#include "window.h"
 
 struct same_sign {
 	int command;
@@ -33,22 +40,117 @@ static const struct metric_kind metrics[] = {
      NULL},
 };
 
+enum { ROWS_LEAST = 3 };
+
+/* The value commanded when the window begins; false: none was. */
+static bool commanded(const struct check_input *in, int channel, int64_t from_ns, double *ret_value)
+{
+	bool found = false;
+	for (size_t i = 0; i < in->command_count; i++)
+		if (in->commands[i].channel == channel && in->commands[i].latest_ns <= from_ns) {
+			*ret_value = in->commands[i].value;
+			found = true;
+		}
+	return found;
+}
+
+/* Another command inside the window would leave open which sign is meant. */
+static bool changes(const struct check_input *in, int channel, struct span span)
+{
+	for (size_t i = 0; i < in->command_count; i++)
+		if (in->commands[i].channel == channel && in->commands[i].latest_ns > span.from_ns &&
+		    in->commands[i].earliest_ns < span.to_ns)
+			return true;
+	return false;
+}
+
+struct agreement {
+	bool against, unknown;
+	char why[224];
+};
+
+static int look_at(const struct check_input *in, int channel, struct span span, double sign,
+                   struct agreement *agreement, struct err *reterr)
+{
+	const struct channel_info *info = &in->channels[channel];
+	struct rows rows;
+	char why[224];
+	if (rows_take(in, channel, span, &rows, reterr) < 0)
+		return -1;
+	bool usable = rows.usable;
+	if (!usable)
+		(void)snprintf(why, sizeof why, "%s", rows.why);
+	else if (rows.count < ROWS_LEAST) {
+		(void)snprintf(why, sizeof why, "only %zu samples of %s in the window, %d are needed",
+		               rows.count, info->name, ROWS_LEAST);
+		usable = false;
+	} else
+		usable = !rows_have_gap(in, &rows, why, sizeof why);
+	if (!usable) {
+		if (!agreement->unknown && !agreement->against)
+			(void)snprintf(agreement->why, sizeof agreement->why, "%s", why);
+		agreement->unknown = true;
+		return 0;
+	}
+	struct stretch stretch = rows_stretch(&rows, 0, rows.count, span.from_ns);
+	struct summary summary;
+	summarise(&stretch, &summary);
+	struct budget budget = {0};
+	budget_random(&budget, summary.sd / sqrt(summary.independent),
+	              fmax(summary.independent - 1, 1));
+	budget_other(&budget, rows_error_limit(&rows, 0, rows.count) / sqrt(3));
+	budget_other(&budget, info->resolution / sqrt(12));
+	double expanded = budget_expanded(&budget);
+	if (sign * summary.mean > expanded)
+		return 0;
+	bool against = -sign * summary.mean > expanded;
+	if (!agreement->against && (against || !agreement->unknown))
+		(void)snprintf(agreement->why, sizeof agreement->why,
+		               "%s was %.4g +- %.2g %s while the command was %s", info->name, summary.mean,
+		               expanded, info->unit->name, sign > 0 ? "positive" : "negative");
+	agreement->against |= against;
+	agreement->unknown |= !against;
+	return 0;
+}
+
 static int evaluate(const struct check_input *in, const void *params, struct metric *ret_metrics,
                     size_t *ret_count, struct err *reterr)
 {
-	(void)in;
-	(void)params;
-	(void)reterr;
-	for (size_t i = 0; i < FIELD_COUNT(metrics); i++)
-		metric_unknown(&ret_metrics[i], &metrics[i], NULL, EVIDENCE_INDEPENDENT,
-		               "this check is not evaluated yet");
+	const struct same_sign *own = params;
 	*ret_count = FIELD_COUNT(metrics);
+	enum evidence evidence = EVIDENCE_INDEPENDENT;
+	for (size_t i = 0; i < own->channels.count; i++)
+		if (in->channels[own->channels.items[i]].evidence == EVIDENCE_SELF_REPORTED)
+			evidence = EVIDENCE_SELF_REPORTED;
+	struct agreement agreement = {.unknown = true};
+	struct span span;
+	double value = 0;
+	if (!window_span(in, &own->window, &span, agreement.why, sizeof agreement.why)) {
+		/* why is said */
+	} else if (!commanded(in, own->command, span.from_ns, &value) || value == 0) {
+		(void)snprintf(agreement.why, sizeof agreement.why,
+		               "%s was not commanded, or to 0, before the window: no sign to compare with",
+		               in->channels[own->command].name);
+	} else if (changes(in, own->command, span)) {
+		(void)snprintf(agreement.why, sizeof agreement.why,
+		               "%s was commanded anew within the window", in->channels[own->command].name);
+	} else {
+		agreement.unknown = own->channels.count == 0;
+		for (size_t i = 0; i < own->channels.count; i++)
+			if (look_at(in, own->channels.items[i], span, value > 0 ? 1 : -1, &agreement, reterr) <
+			    0)
+				return -1;
+	}
+	if (agreement.against || !agreement.unknown)
+		put_yes_no(&ret_metrics[0], &metrics[0], evidence, !agreement.against, agreement.why);
+	else
+		metric_unknown(&ret_metrics[0], &metrics[0], NULL, evidence, "%s", agreement.why);
 	return 0;
 }
 
 const struct check_kind check_same_sign = {
     .name = "same_sign",
-    .text = "see table",
+    .text = "channels have the sign of a command",
     .fields = &table,
     .params_size = sizeof(struct same_sign),
     .metrics = metrics,
