@@ -132,43 +132,74 @@ static double margin(const struct metric *metric, const struct limit *limit)
 	return size > 0 ? left / size : left;
 }
 
+/* One judged limit and where it stands. */
+struct judged {
+	const struct check_result *check;
+	const struct metric_result *metric;
+	const struct limit_result *limit;
+};
+
+struct tally {
+	struct judged worst, nearest;
+	size_t total, like_worst;
+	double nearest_margin;
+};
+
+static void tally_limit(struct tally *tally, struct judged judged)
+{
+	enum verdict verdict = judged.limit->verdict;
+	tally->total++;
+	if (!tally->worst.limit || (verdict != tally->worst.limit->verdict &&
+	                            verdict_worse(verdict, tally->worst.limit->verdict) == verdict)) {
+		tally->worst = judged;
+		tally->like_worst = 0;
+	}
+	tally->like_worst += verdict == tally->worst.limit->verdict;
+	double left = margin(&judged.metric->metric, judged.limit->limit);
+	if (!tally->nearest.limit || left < tally->nearest_margin) {
+		tally->nearest = judged;
+		tally->nearest_margin = left;
+	}
+}
+
+/* The reason of a limit, with its check where there are several, and who says so. */
+static void reason_of(const struct test_result *result, const struct judged *judged, char *buffer,
+                      size_t size)
+{
+	bool several = result->check_count > 1;
+	(void)snprintf(buffer, size, "%s%s%s (%s)", several ? judged->check->use->name : "",
+	               several ? ": " : "", judged->limit->reason,
+	               judged->metric->metric.evidence == EVIDENCE_SELF_REPORTED
+	                   ? "self-reported by the device under test"
+	                   : "independent evidence");
+}
+
 /* The verdict over all limits, with the first reason of the worst sort. */
 static void conclude_limits(struct test_result *result)
 {
-	const struct limit_result *worst = NULL, *nearest = NULL;
-	size_t total = 0, same = 0;
-	double nearest_margin = HUGE_VAL;
+	struct tally tally = {0};
+	char reason[700];
 	for (size_t c = 0; c < result->check_count; c++)
 		for (size_t m = 0; m < result->checks[c].metric_count; m++) {
 			const struct metric_result *metric = &result->checks[c].metrics[m];
-			for (size_t l = 0; l < metric->limit_count; l++) {
-				const struct limit_result *limit = &metric->limits[l];
-				total++;
-				if (!worst || (limit->verdict != worst->verdict &&
-				               verdict_worse(limit->verdict, worst->verdict) == limit->verdict)) {
-					worst = limit;
-					same = 0;
-				}
-				same += limit->verdict == worst->verdict;
-				double left = margin(&metric->metric, limit->limit);
-				if (!nearest || left < nearest_margin) {
-					nearest = limit;
-					nearest_margin = left;
-				}
-			}
+			for (size_t l = 0; l < metric->limit_count; l++)
+				tally_limit(&tally,
+				            (struct judged){&result->checks[c], metric, &metric->limits[l]});
 		}
-	if (!worst)
+	if (!tally.worst.limit) {
 		conclude(result, VERDICT_ERROR, "the test has no limit, so nothing was judged");
-	else if (worst->verdict == VERDICT_PASS && total == 1)
-		conclude(result, VERDICT_PASS, "%s", worst->reason);
-	else if (worst->verdict == VERDICT_PASS)
-		conclude(result, VERDICT_PASS, "all %zu limits are met; the nearest: %s", total,
-		         nearest->reason);
-	else if (same == 1)
-		conclude(result, worst->verdict, "%s", worst->reason);
+		return;
+	}
+	enum verdict verdict = tally.worst.limit->verdict;
+	bool passed = verdict == VERDICT_PASS;
+	reason_of(result, passed ? &tally.nearest : &tally.worst, reason, sizeof reason);
+	if (passed && tally.total > 1)
+		conclude(result, verdict, "all %zu limits are met; the nearest: %s", tally.total, reason);
+	else if (tally.like_worst > 1)
+		conclude(result, verdict, "%s; and %zu more of %zu limits %s", reason, tally.like_worst - 1,
+		         tally.total, verdict == VERDICT_FAIL ? "failed" : "are open");
 	else
-		conclude(result, worst->verdict, "%s (and %zu more of %zu limits: %s)", worst->reason,
-		         same - 1, total, verdict_name(worst->verdict));
+		conclude(result, verdict, "%s", reason);
 }
 
 static int judge_completed(struct judging *j)

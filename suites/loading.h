@@ -93,6 +93,11 @@ bool sample_load(struct loading *l, const struct yaml_node *node, struct sample_
                  size_t *ret_count);
 /* A channel by name; -1 after a fault: there is none, or it is text. */
 int number_channel_load(struct loading *l, const struct yaml_node *node);
+/*
+ * Refuses a level that the coding of a channel cannot show, be it as a value or
+ * as a difference of two; false after a fault.
+ */
+bool level_possible(struct loading *l, const struct yaml_node *node, int channel, double level);
 /* What the step loader needs, with the values of this suite; no marks. */
 struct step_context loading_steps(struct loading *l);
 

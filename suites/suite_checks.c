@@ -105,7 +105,8 @@ static bool resolve_level(struct loading *l, const struct field *field,
 	if (channel < 0)
 		return false;
 	struct step_context context = loading_steps(l);
-	return channel_value_load(&context, node, channel, ret);
+	return channel_value_load(&context, node, channel, ret) &&
+	       level_possible(l, node, channel, *ret);
 }
 
 static bool resolve_levels(struct loading *l, const struct field *field,

@@ -64,24 +64,6 @@ static const struct dimension *shape_dimension(enum metric_shape shape)
 	}
 }
 
-/* A level beyond what the channel can show, be it as a value or as a difference of two. */
-static bool level_possible(struct loading *l, const struct yaml_node *node, int channel,
-                           double level)
-{
-	const struct rig_channel *c = &l->rig->channels[channel];
-	if (c->place == PLACE_DERIVED)
-		return true;
-	double least, most;
-	codec_range(&c->codec, &least, &most);
-	double span = most - least;
-	if (level >= fmin(least, -span) && level <= fmax(most, span))
-		return true;
-	faults_add(l->faults, node->at,
-	           "channel '%s' can only hold %.6g to %.6g %s: the limit could never be reached",
-	           c->info.name, least, most, c->info.unit->name);
-	return false;
-}
-
 /* One bound in the metric's unit. channel: of a level, else -1. */
 static bool bound_load(struct loading *l, const struct yaml_node *node,
                        const struct metric_kind *metric, int channel, double *ret,
@@ -119,7 +101,12 @@ static bool bound_load(struct loading *l, const struct yaml_node *node,
 		*ret = metric->shape == METRIC_TIME ? quantity_si(quantity)
 		                                    : quantity_in(quantity, unit_find("deg", 3));
 		*ret_shown = quantity.unit;
-		return true;
+		if (metric->shape != METRIC_ANGLE_ELEC || fabs(*ret) <= 180)
+			return true;
+		faults_add(l->faults, node->at,
+		           "%s lies between -180 deg and 180 deg: the limit could never be reached",
+		           metric->name);
+		return false;
 	}
 }
 

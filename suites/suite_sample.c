@@ -3,6 +3,7 @@
  * `sample`: what is read while a test runs, and how often. A channel stands in
  * one group only, since it is read at one interval.
  */
+#include <math.h>
 #include <string.h>
 
 #include "loading.h"
@@ -56,6 +57,23 @@ int number_channel_load(struct loading *l, const struct yaml_node *node)
 		return channel;
 	faults_add(l->faults, node->at, "'%s' is text: it cannot be sampled or judged", c->info.name);
 	return -1;
+}
+
+bool level_possible(struct loading *l, const struct yaml_node *node, int channel, double level)
+{
+	const struct rig_channel *c = &l->rig->channels[channel];
+	if (c->place == PLACE_DERIVED)
+		return true;
+	double least, most;
+	codec_range(&c->codec, &least, &most);
+	double span = most - least;
+	if (level >= fmin(least, -span) && level <= fmax(most, span))
+		return true;
+	char low[96], high[96];
+	faults_add(l->faults, node->at, "%s can only be %s to %s: the limit could never be reached",
+	           c->info.name, channel_value_text(l->rig, channel, least, low, sizeof low),
+	           channel_value_text(l->rig, channel, most, high, sizeof high));
+	return false;
 }
 
 static bool every_load(struct loading *l, const struct yaml_node *node, int64_t *ret_ns)
