@@ -9,7 +9,8 @@
 
 #include <math.h>
 
-#define TWO_PI 6.28318530717958647692
+#define TWO_PI        6.28318530717958647692
+#define PHASE_WATCH_S 5e-3 /* smoothing of what the phase loss is judged by */
 
 void controller_control(struct controller *controller, int control, int64_t now_ns)
 {
@@ -72,6 +73,14 @@ static void believed_angle(struct controller *c, const struct encoder *encoder)
 	c->angle_elec_rad = elec;
 }
 
+/* How much current each phase carries, smoothed. */
+static void watch_phases(struct controller *c, double a, double b)
+{
+	double phases[3] = {fabs(a), fabs(b), fabs(a + b)};
+	for (int i = 0; i < 3; i++)
+		c->phase_use_a[i] += c->period_s / PHASE_WATCH_S * (phases[i] - c->phase_use_a[i]);
+}
+
 static void measure(struct controller *c, const struct sensed *sensed)
 {
 	believed_angle(c, sensed->encoder);
@@ -89,8 +98,21 @@ static void measure(struct controller *c, const struct sensed *sensed)
 	c->current_q_a = beta * cosine - alpha * sine;
 	c->torque_nm =
 	    1.5 * c->pole_pairs * (c->flux_wb + (c->ld_h - c->lq_h) * c->current_d_a) * c->current_q_a;
+	watch_phases(c, a, b);
+	double missing = c->pulses_on ? hypot(c->current_d_command_a - c->current_d_a,
+	                                      c->current_q_command_a - c->current_q_a)
+	                              : 0;
+	c->missing_current_a += c->period_s / PHASE_WATCH_S * (missing - c->missing_current_a);
 	c->dc_v = sensed->dc_v;
 	c->winding_c = sensed->winding_c;
+}
+
+static double ramped_command(struct controller *c)
+{
+	double left = c->speed_command_rad_s - c->ramped_rad_s;
+	double most = c->ramp_rad_s2 > 0 ? c->ramp_rad_s2 * c->period_s : HUGE_VAL;
+	c->ramped_rad_s += left > most ? most : left < -most ? -most : left;
+	return c->ramped_rad_s;
 }
 
 static double torque_command(struct controller *c, int64_t now_ns)
@@ -104,7 +126,7 @@ static double torque_command(struct controller *c, int64_t now_ns)
 	if (defect_in(c->defects, DEFECT_GAIN_SCHEDULED_WRONG) &&
 	    fabs(c->speed_rad_s) > 0.4 * c->rated_speed_rad_s)
 		gain_share = 0.0625;
-	return speed_loop_step(&c->speed_loop, c->speed_command_rad_s, c->speed_rad_s, gain_share);
+	return speed_loop_step(&c->speed_loop, ramped_command(c), c->speed_rad_s, gain_share);
 }
 
 void controller_step(struct controller *controller, const struct sensed *sensed)

@@ -45,6 +45,10 @@ void devices_init(struct model *model)
 	noise_init(&model->fault_box.noise, config->seed, NOISE_RELAYS);
 	noise_init(&model->sensor_noise, config->seed, NOISE_SENSORS);
 	model->sensor_noise_a = config->current_noise_a;
+	for (int i = 0; i < 2; i++) {
+		model->sensor_offset_a[i] = between(&build, config->current_offset_a);
+		model->sensor_gain[i] = 1 + between(&build, config->current_gain_error);
+	}
 }
 
 void fault_box_set(struct fault_box *box, enum relay_name relay, bool on, int64_t now_ns)

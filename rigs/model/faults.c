@@ -9,8 +9,11 @@
  *   overvoltage       2    0.3 ms      DC link above the limit / below 97 % of it
  *   encoder loss      3    0.3 ms       no differential signal level at the receiver / level back
  *   overtemperature   4    20 ms       winding sensor above the limit / 5 K below it
- *   link watchdog     9    at once     enabled, and silent for longer than its time / heard again,
- *                                      or enable taken away
+ *   undervoltage      5    5 ms        DC link below the limit / above 103 % of it
+ *   phase loss        6    10 ms       current missing that was commanded, and one phase without /
+ * pulses off torque off        7    100 ms      the channels of safe torque off differ / agree
+ * again channels differ link watchdog     9    at once     enabled, and silent for longer than its
+ * time / heard again, or enable taken away
  *
  * Encoder loss by missing edges alone was rejected: at standstill there are
  * none, and that is where a lost encoder shakes the shaft at the next command.
@@ -28,6 +31,9 @@ static const struct watch WATCHES[FAULTS] = {
     [FAULT_OVERVOLTAGE] = {2, 1, 300000, DEFECT_OVERVOLTAGE_MISSED},
     [FAULT_ENCODER_LOSS] = {3, 4, 300000, DEFECT_ENCODER_LOSS_MISSED},
     [FAULT_OVERTEMPERATURE] = {4, 3, 20000000, DEFECT_OVERTEMPERATURE_MISSED},
+    [FAULT_UNDERVOLTAGE] = {5, 5, 5000000, DEFECT_UNDERVOLTAGE_MISSED},
+    [FAULT_PHASE_LOSS] = {6, 6, 10000000, DEFECT_PHASE_LOSS_MISSED},
+    [FAULT_TORQUE_OFF_DIFFERS] = {7, 7, 100000000, DEFECT_TORQUE_OFF_CHANNEL_IGNORED},
     [FAULT_LINK_WATCHDOG] = {9, 9, 0, DEFECT_WATCHDOG_MISSING},
 };
 
@@ -47,6 +53,19 @@ static bool silent(const struct controller *c, int64_t now_ns)
 	return time_ns > 0 && (c->control & 1) && now_ns - c->heard_ns > time_ns;
 }
 
+/* Current is missing, and one phase carries next to none of what the largest carries. */
+static bool phase_lost(const struct controller *c)
+{
+	if (c->missing_current_a < 0.15 * c->rated_current_a)
+		return false;
+	const double *use = c->phase_use_a;
+	double most = use[0] > use[1] ? use[0] : use[1];
+	double least = use[0] < use[1] ? use[0] : use[1];
+	most = use[2] > most ? use[2] : most;
+	least = use[2] < least ? use[2] : least;
+	return least < 0.15 * most;
+}
+
 static bool stands(const struct controller *c, enum fault fault, const struct sensed *sensed)
 {
 	switch (fault) {
@@ -58,6 +77,12 @@ static bool stands(const struct controller *c, enum fault fault, const struct se
 		return !sensed->encoder->level_good;
 	case FAULT_OVERTEMPERATURE:
 		return sensed->winding_c > c->overtemperature_c;
+	case FAULT_UNDERVOLTAGE:
+		return sensed->dc_v < c->undervoltage_v;
+	case FAULT_PHASE_LOSS:
+		return phase_lost(c);
+	case FAULT_TORQUE_OFF_DIFFERS:
+		return sensed->torque_off[0] != sensed->torque_off[1];
 	case FAULT_LINK_WATCHDOG:
 	case FAULTS:
 		break;
@@ -69,6 +94,8 @@ bool fault_gone(const struct controller *controller, enum fault fault, const str
 {
 	if (fault == FAULT_OVERVOLTAGE)
 		return sensed->dc_v < 0.97 * controller->overvoltage_v;
+	if (fault == FAULT_UNDERVOLTAGE)
+		return sensed->dc_v > 1.03 * controller->undervoltage_v;
 	if (fault == FAULT_OVERTEMPERATURE)
 		return sensed->winding_c < controller->overtemperature_c - 5;
 	return !stands(controller, fault, sensed);

@@ -140,6 +140,9 @@ static void init_controller(struct model *model)
 	controller->current_most_a = c->current_limit_a;
 	controller->overcurrent_a = c->overcurrent_a;
 	controller->overvoltage_v = c->overvoltage_v;
+	controller->undervoltage_v = 0.75 * c->dc_voltage_v;
+	controller->rated_current_a = c->rated_current_a;
+	controller->ramp_rad_s2 = c->speed_ramp_rad_s2;
 	controller->overtemperature_c = c->overtemperature_c;
 	controller->rated_speed_rad_s = c->rated_speed_rad_s;
 	/* The allowance keeps a limit written in rpm from being refused for its rounding. */
@@ -183,6 +186,8 @@ static void renew_image(struct model *model)
 	    .voltage_q_v = c->voltage_q_v,
 	    .fault_code = c->fault_code,
 	    .state = (int)c->state,
+	    .torque_off_inputs = model->fault_box.relays[RELAY_STO_A].closed |
+	                         model->fault_box.relays[RELAY_STO_B].closed << 1,
 	    .running = c->state == STATE_RUNNING,
 	    .ready = c->state == STATE_READY || c->state == STATE_RUNNING,
 	    .rotor_counts = c->counts,
@@ -206,6 +211,16 @@ static void renew_image(struct model *model)
 	model->image = image;
 }
 
+/* Offset, gain error, noise and quantisation of one of the two current sensors. */
+static double current_sensor(struct model *model, int phase)
+{
+	double value = model->sensor_gain[phase] * model->plant.phase_a[phase] +
+	               model->sensor_offset_a[phase] +
+	               model->sensor_noise_a * noise_normal(&model->sensor_noise);
+	double step = model->config.current_step_a;
+	return step > 0 ? step * rint(value / step) : value;
+}
+
 static void control(struct model *model)
 {
 	struct plant *plant = &model->plant;
@@ -221,12 +236,13 @@ static void control(struct model *model)
 	struct sensed sensed = {
 	    .now_ns = model->grid_ns,
 	    .now_s = now_s,
-	    .phase_a = plant->phase_a[0] + model->sensor_noise_a * noise_normal(&model->sensor_noise),
-	    .phase_b = plant->phase_a[1] + model->sensor_noise_a * noise_normal(&model->sensor_noise),
+	    .phase_a = current_sensor(model, 0),
+	    .phase_b = current_sensor(model, 1),
 	    .comparator_a = comparator,
 	    .dc_v = plant->dc_v,
 	    .winding_c = plant->winding_c,
 	    .encoder = &model->encoder,
+	    .torque_off = {box->relays[RELAY_STO_A].closed, box->relays[RELAY_STO_B].closed},
 	};
 	/* A resistor in the place of the winding's sensor. */
 	if (box->relays[RELAY_HOT_SENSOR].closed)
@@ -261,8 +277,10 @@ static void step(struct model *model)
 	double duty[3] = {controller->duty[0], controller->duty[1], controller->duty[2]};
 
 	fault_box_step(box, model->grid_ns);
-	plant->supply_v =
-	    model->config.dc_voltage_v * (box->relays[RELAY_SUPPLY_SURGE].closed ? 1.4 : 1);
+	double surge = box->relays[RELAY_SUPPLY_SURGE].closed ? 1.4 : 1;
+	double sag = box->relays[RELAY_SUPPLY_SAG].closed ? 0.6 : 1;
+	plant->supply_v = model->config.dc_voltage_v * surge * sag;
+	plant->phase_a_open = box->relays[RELAY_PHASE_OPEN].closed;
 	load_step(&model->load, model->grid_ns, controller->pulses_on);
 	plant->pulses_on = controller->pulses_on;
 	double copper_before = plant->energies.copper;

@@ -58,9 +58,11 @@ struct model_config {
 	double thermal_resistance_kw, thermal_capacitance_jk;
 	double control_period_s, switching_period_s, integration_step_s, dead_time_s;
 	double speed_bandwidth_rad_s, current_bandwidth_rad_s; /* 0: tuned from the nameplate */
-	double speed_limit_rad_s, current_limit_a, overcurrent_a, overvoltage_v, overtemperature_c;
+	double speed_ramp_rad_s2, speed_limit_rad_s, current_limit_a, overcurrent_a, overvoltage_v,
+	    overtemperature_c;
 	double refresh_s;     /* of the controller's register image */
 	double relay_delay_s; /* of the fault box, largest; each is drawn in [0, it] */
+	double current_offset_a, current_gain_error, current_step_a;
 	double current_noise_a, torque_noise_nm, speed_noise_rad_s;
 	double ambient_c;
 	const char *firmware, *serial_number; /* texts that it answers */

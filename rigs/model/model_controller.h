@@ -35,6 +35,9 @@ enum fault {
 	FAULT_OVERVOLTAGE,
 	FAULT_ENCODER_LOSS,
 	FAULT_OVERTEMPERATURE,
+	FAULT_UNDERVOLTAGE,
+	FAULT_PHASE_LOSS,
+	FAULT_TORQUE_OFF_DIFFERS, /* the two channels of safe torque off */
 	FAULT_LINK_WATCHDOG,
 	FAULTS,
 };
@@ -55,6 +58,7 @@ struct sensed {
 	double phase_a, phase_b; /* from the current sensors */
 	double comparator_a;     /* largest phase current that the overcurrent comparator sees */
 	double dc_v, winding_c;  /* from their sensors */
+	bool torque_off[2];      /* the channels of safe torque off that are open */
 	struct encoder *encoder; /* the controller may set its counter */
 };
 
@@ -90,8 +94,8 @@ struct controller {
 	double flux_wb, ld_h, lq_h;
 	double period_s, switching_period_s;
 	double current_most_a, magnetising_a;
-	double overcurrent_a, overvoltage_v, overtemperature_c;
-	double rated_speed_rad_s, speed_most_rad_s;
+	double overcurrent_a, overvoltage_v, undervoltage_v, overtemperature_c;
+	double rated_current_a, rated_speed_rad_s, speed_most_rad_s;
 	double offset_elec_rad; /* of the encoder; what is stored, not what is true */
 	double null_share;
 	double weakening_share; /* of the linear voltage limit, above which the field is weakened */
@@ -99,7 +103,7 @@ struct controller {
 	struct current_loops current_loops;
 
 	/* commands, as written */
-	double speed_command_rad_s;
+	double speed_command_rad_s, ramp_rad_s2; /* of the command's ramp generator; 0: none */
 	int control;
 	int64_t watchdog_ns, heard_ns;
 	bool enable_given, enable_taken, reset_edge; /* edges since the last period */
@@ -110,6 +114,9 @@ struct controller {
 	double speed_rad_s, angle_elec_rad, current_d_a, current_q_a, dc_v, winding_c, torque_nm;
 
 	/* states and faults */
+	double ramped_rad_s;      /* speed command behind the ramp generator */
+	double missing_current_a; /* commanded minus flowing, smoothed */
+	double phase_use_a[3];    /* magnitude that each phase carries, smoothed */
 	enum drive_state state;
 	int fault_code;
 	enum fault fault; /* what is latched, valid while fault_code != 0 */

@@ -61,6 +61,12 @@ DEFECT(OVERVOLTAGE_MISSED, "overvoltage-missed", "fault_reaction",
        "the DC link voltage is not watched")
 DEFECT(OVERTEMPERATURE_MISSED, "overtemperature-missed", "fault_reaction",
        "the winding temperature is not watched")
+DEFECT(UNDERVOLTAGE_MISSED, "undervoltage-missed", "fault_reaction",
+       "a sagging DC link is not watched")
+DEFECT(PHASE_LOSS_MISSED, "phase-loss-missed", "fault_reaction",
+       "a motor phase that carries no current is not noticed")
+DEFECT(TORQUE_OFF_CHANNEL_IGNORED, "torque-off-channel-ignored", "fault_reaction",
+       "channel B of safe torque off is not wired through, and nobody compares the channels")
 DEFECT(FAULT_LATE, "fault-late", "fault_reaction",
        "every fault is acted upon 150 ms late")
 /* communication */

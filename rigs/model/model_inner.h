@@ -24,6 +24,10 @@ enum relay_name {
 	RELAY_HOT_SENSOR,
 	RELAY_SUPPLY_SURGE,
 	RELAY_CURRENT_SURGE,
+	RELAY_SUPPLY_SAG,
+	RELAY_PHASE_OPEN,
+	RELAY_STO_A,
+	RELAY_STO_B,
 	RELAYS,
 };
 
@@ -58,7 +62,7 @@ struct image {
 	double speed_rad_s, dc_voltage_v, current_d_a, current_q_a, torque_nm, temperature_c;
 	double current_d_command_a, current_q_command_a, duty[3];
 	double voltage_alpha_v, voltage_beta_v, voltage_d_v, voltage_q_v;
-	int fault_code, state;
+	int fault_code, state, torque_off_inputs;
 	bool running, ready;
 	int rotor_counts;
 	uint16_t life;
@@ -87,7 +91,7 @@ struct model {
 	size_t past_count;
 	int64_t freeze_at_ns;
 	struct noise sensor_noise;
-	double sensor_noise_a;
+	double sensor_noise_a, sensor_offset_a[2], sensor_gain[2];
 };
 
 /* devices.c: the bench around the drive. */

@@ -19,12 +19,15 @@ SHOWN("controller.winding_temperature", MODEL_CONTROLLER, DIM_TEMPERATURE, HOLDS
 SHOWN("controller.life", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_LIFE, image.life,
       "milliseconds, modulo 65536, of the register image")
 SHOWN("controller.fault_code", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_INT, image.fault_code,
-      "0 none, 1 overcurrent, 2 overvoltage, 3 encoder loss, 4 overtemperature, 9 link watchdog")
+      "0 none, 1 overcurrent, 2 overvoltage, 3 encoder loss, 4 overtemperature, 5 undervoltage, "
+      "6 phase loss, 7 safe torque off channels differ, 9 link watchdog")
 SHOWN("controller.running", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_BOOL, image.running, "1: enabled and controlling")
 SHOWN("controller.ready", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_BOOL, image.ready,
       "1: no fault, may be enabled or is")
 SHOWN("controller.state", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_INT, image.state,
       "0 starting, 1 ready, 2 running, 3 fault, 4 inhibited")
+SHOWN("controller.torque_off_inputs", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_INT,
+      image.torque_off_inputs, "bit 0: channel A of safe torque off is open, bit 1: channel B")
 SHOWN("controller.rotor_counts", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_INT, image.rotor_counts,
       "encoder counts since index, modulo 4 times the lines")
 SHOWN("controller.current_d_command", MODEL_CONTROLLER, DIM_CURRENT_AMPLITUDE, HOLDS_DOUBLE,
@@ -84,4 +87,8 @@ RELAY("fault_box.hot_sensor", RELAY_HOT_SENSOR, "1: the winding's sensor is 20 K
 RELAY("fault_box.supply_surge", RELAY_SUPPLY_SURGE, "1: the supply has 1.4 times its voltage")
 RELAY("fault_box.current_surge", RELAY_CURRENT_SURGE,
       "1: a test winding feeds the overcurrent comparator with twice its limit")
+RELAY("fault_box.supply_sag", RELAY_SUPPLY_SAG, "1: the supply has 0.6 times its voltage")
+RELAY("fault_box.phase_open", RELAY_PHASE_OPEN, "1: the wire of motor phase a is open")
+RELAY("fault_box.sto_a", RELAY_STO_A, "1: channel A of the safe torque off input is open")
+RELAY("fault_box.sto_b", RELAY_STO_B, "1: channel B of the safe torque off input is open")
 /* clang-format on */

@@ -9,12 +9,13 @@
  *                                                                 set, pulses on
  *   running    enable taken                            ready      pulses off: the shaft coasts
  *   any        a fault has stood for its filter time   fault      pulses off at once, code latched
- *   fault      reset edge, cause gone, enable away     ready      code cleared
- *   fault      reset edge, cause gone, enable stands   inhibited  code cleared
- *   inhibited  enable taken                            ready
+ *   running    safe torque off demanded                inhibited  pulses off in the hardware; no
+ * fault fault      reset edge, cause gone, enable away     ready      code cleared fault      reset
+ * edge, cause gone, enable stands   inhibited  code cleared inhibited  enable taken ready
  *
  * A reset while the cause lasts is lost: it does not take effect later.
- * A fault in the state inhibited leads to fault again.
+ * A fault in the state inhibited leads to fault again. While safe torque off is demanded,
+ * by either of its channels, an enable is lost.
  */
 #include "model_controller.h"
 
@@ -25,6 +26,7 @@ enum event {
 	EVENT_ENABLE_GIVEN,
 	EVENT_ENABLE_TAKEN,
 	EVENT_FAULT,
+	EVENT_TORQUE_OFF,
 	EVENT_RESET_AWAY,   /* reset is good, enable is away */
 	EVENT_RESET_STANDS, /* reset is good, enable stands */
 };
@@ -40,6 +42,7 @@ static const struct transition {
     {STATE_READY, EVENT_FAULT, STATE_FAULT},
     {STATE_RUNNING, EVENT_ENABLE_TAKEN, STATE_READY},
     {STATE_RUNNING, EVENT_FAULT, STATE_FAULT},
+    {STATE_RUNNING, EVENT_TORQUE_OFF, STATE_INHIBITED},
     {STATE_FAULT, EVENT_RESET_AWAY, STATE_READY},
     {STATE_FAULT, EVENT_RESET_STANDS, STATE_INHIBITED},
     {STATE_INHIBITED, EVENT_ENABLE_TAKEN, STATE_READY},
@@ -55,7 +58,7 @@ static void enter_running(struct controller *c, const struct sensed *sensed)
 	c->current_loops.integral_d = c->current_loops.integral_q = 0;
 	c->speed_loop.integral_nm = 0;
 	c->torque_q_a = c->weakening_d_a = c->wanted_v = 0;
-	c->speed_loop.command_rad_s = c->speed_rad_s;
+	c->speed_loop.command_rad_s = c->ramped_rad_s = c->speed_rad_s;
 	c->pulses_on = true;
 }
 
@@ -117,6 +120,14 @@ static void answer_reset(struct controller *c, const struct sensed *sensed, bool
 		enter(c, STATE_RUNNING, sensed);
 }
 
+/* Either channel cuts the pulses. */
+static bool torque_off_demanded(const struct controller *c, const struct sensed *sensed)
+{
+	bool second =
+	    sensed->torque_off[1] && !defect_in(c->defects, DEFECT_TORQUE_OFF_CHANNEL_IGNORED);
+	return sensed->torque_off[0] || second;
+}
+
 void states_step(struct controller *controller, const struct sensed *sensed, int fault)
 {
 	struct controller *c = controller;
@@ -136,6 +147,11 @@ void states_step(struct controller *controller, const struct sensed *sensed, int
 	}
 	if (c->enable_taken)
 		happen(c, EVENT_ENABLE_TAKEN, sensed);
+	if (torque_off_demanded(c, sensed)) {
+		c->enable_given = false;
+		c->pulses_on = false;
+		happen(c, EVENT_TORQUE_OFF, sensed);
+	}
 	if (c->enable_given && fault < 0)
 		happen(c, EVENT_ENABLE_GIVEN, sensed);
 	c->enable_given = c->enable_taken = c->reset_edge = false;

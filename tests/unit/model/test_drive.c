@@ -87,6 +87,41 @@ static void a_load_step_is_regulated_out(void **state)
 	model_release(model);
 }
 
+static void the_ramp_generator_limits_the_rate_of_the_command(void **state)
+{
+	(void)state;
+	struct model_config config;
+	model_config_init(&config);
+	config.speed_ramp_rad_s2 = 500;
+	struct model *model = bench_of(&config);
+	bench_drive(model, 0, 0);
+	bench_write(model, "controller.speed_command", 150);
+	bench_run(model, 100);
+	double early = bench_read(model, "shaft.speed");
+	bench_run(model, 150);
+	assert_near(bench_read(model, "shaft.speed") - early, 500 * 0.15, 1, "rad/s");
+	bench_run(model, 200);
+	assert_near(bench_read(model, "shaft.speed"), 150, 0.3, "rad/s");
+	model_release(model);
+}
+
+static void a_soft_shaft_is_still_controlled(void **state)
+{
+	(void)state;
+	struct model_config config;
+	model_config_init(&config);
+	config.shaft_stiffness_nm_rad = 3000;
+	struct model *model = bench_of(&config);
+	bench_drive(model, 1500, 1.2);
+	assert_near(bench_mean(model, "shaft.speed", 100) / RPM, 1500, 0.5, "rpm");
+	assert_near(bench_mean(model, "shaft.torque", 100), 1.2 + 0.8 * (0.05 + 0.0785), 0.01, "Nm");
+	const struct plant_energies *e = &model->plant.energies;
+	double spent = e->copper + e->friction + e->load + e->resistors;
+	assert_near(spent + plant_stored(&model->plant) - 0.5 * 470e-6 * 310 * 310, e->supply,
+	            1e-3 * e->supply, "J");
+	model_release(model);
+}
+
 static void the_lively_loop_overshoots(void **state)
 {
 	(void)state;
@@ -317,6 +352,8 @@ int main(void)
 	    cmocka_unit_test(a_healthy_step_settles_in_time_with_little_overshoot),
 	    cmocka_unit_test(a_small_step_overshoots_like_the_symmetric_optimum),
 	    cmocka_unit_test(a_load_step_is_regulated_out),
+	    cmocka_unit_test(the_ramp_generator_limits_the_rate_of_the_command),
+	    cmocka_unit_test(a_soft_shaft_is_still_controlled),
 	    cmocka_unit_test(the_lively_loop_overshoots),
 	    cmocka_unit_test(the_sluggish_loop_is_slow),
 	    cmocka_unit_test(without_integral_the_load_leaves_an_error),

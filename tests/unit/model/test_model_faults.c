@@ -16,8 +16,12 @@ static const struct cause {
     {"fault_box.supply_surge", 2, 15, "overvoltage-missed"},
     {"fault_box.encoder_open", 3, 14, "encoder-loss-missed"},
     {"fault_box.hot_sensor", 4, 34, "overtemperature-missed"},
+    {"fault_box.supply_sag", 5, 160, "undervoltage-missed"},
+    {"fault_box.phase_open", 6, 75, "phase-loss-missed"},
 };
 enum { CAUSE_COUNT = sizeof CAUSES / sizeof CAUSES[0] };
+/* Of an open phase nothing is seen once the pulses are off: it is the last row. */
+enum { SEEN_AT_REST = CAUSE_COUNT - 1 };
 
 static int code(struct model *model)
 {
@@ -66,11 +70,14 @@ static void every_cause_trips_with_its_code_and_takes_the_torque_off(void **stat
 	static const double SPEEDS[] = {0, 600, 3000, -1500};
 	for (int i = 0; i < CAUSE_COUNT; i++)
 		for (size_t k = 0; k < 4; k++) {
+			/* Where the motor takes no power, nothing draws the DC link down. */
+			if (SPEEDS[k] <= 0 && CAUSES[i].code == 5)
+				continue;
 			struct model *model = bench_new(NULL);
 			bench_drive(model, SPEEDS[k], 1);
 			double before = bench_read(model, "shaft.torque");
 			assert_true(before > 0.8);
-			double ms = detect(model, CAUSES[i].relay, 50);
+			double ms = detect(model, CAUSES[i].relay, 200);
 			assert_int_equal(code(model), CAUSES[i].code);
 			assert_true(ms <= CAUSES[i].most_ms);
 			assert_false(running(model));
@@ -84,7 +91,7 @@ static void every_cause_trips_with_its_code_and_takes_the_torque_off(void **stat
 static void a_fault_stays_until_an_edge_resets_it_after_its_cause(void **state)
 {
 	(void)state;
-	for (int i = 0; i < CAUSE_COUNT; i++) {
+	for (int i = 0; i < SEEN_AT_REST; i++) {
 		struct model *model = tripped(NULL, &CAUSES[i], 600);
 		control(model, 0);
 		control(model, 2); /* the cause lasts */
@@ -237,15 +244,15 @@ static void a_missed_fault_goes_on_running(void **state)
 static void wrong_and_late_faults(void **state)
 {
 	(void)state;
-	static const int WRONG[] = {2, 1, 4, 3};
+	static const int WRONG[] = {2, 1, 4, 3, 5, 6}; /* the first four have each other's */
 	for (int i = 0; i < CAUSE_COUNT; i++) {
 		struct model *model = tripped("wrong-fault-code", &CAUSES[i], 600);
 		assert_int_equal(code(model), WRONG[i]);
 		model_release(model);
 		model = bench_new("fault-late");
 		bench_drive(model, 600, 1);
-		double ms = detect(model, CAUSES[i].relay, 300);
-		assert_true(ms >= 150 && ms < 190);
+		double ms = detect(model, CAUSES[i].relay, 400);
+		assert_true(ms >= 150 && ms < 150 + CAUSES[i].most_ms + 6);
 		assert_int_equal(code(model), CAUSES[i].code);
 		model_release(model);
 	}
@@ -267,7 +274,7 @@ static void slow_torque_off_shows_the_code_but_keeps_the_torque(void **state)
 static void latching_and_reset_defects_say_what_they_do(void **state)
 {
 	(void)state;
-	for (int i = 0; i < CAUSE_COUNT; i++) {
+	for (int i = 0; i < SEEN_AT_REST; i++) {
 		struct model *model = tripped("fault-not-latched", &CAUSES[i], 600);
 		bench_write(model, CAUSES[i].relay, 0);
 		bench_run(model, 200);
@@ -315,6 +322,48 @@ static void a_standing_reset_bit_resets_only_with_its_defect(void **state)
 		bench_write(model, CAUSES[3].relay, 0);
 		bench_run(model, 100);
 		assert_int_equal(code(model), wrong ? 0 : 4);
+		model_release(model);
+	}
+}
+
+/* Torque off on either channel is no fault; channels that differ for long are one. */
+static void safe_torque_off_takes_the_pulses_off_and_inhibits(void **state)
+{
+	(void)state;
+	for (int first = 0; first < 2; first++) {
+		struct model *model = bench_new(NULL);
+		bench_drive(model, 1500, 1);
+		bench_write(model, first ? "fault_box.sto_b" : "fault_box.sto_a", 1);
+		bench_run(model, 14);
+		assert_false(running(model));
+		assert_near(model->plant.current_q_a, 0, 0, "A");
+		assert_int_equal(code(model), 0);
+		bench_write(model, first ? "fault_box.sto_a" : "fault_box.sto_b", 1);
+		bench_run(model, 500);
+		assert_int_equal(code(model), 0);
+		assert_near(bench_read(model, "controller.torque_off_inputs"), 3, 0, "");
+		bench_write(model, "fault_box.sto_a", 0);
+		bench_write(model, "fault_box.sto_b", 0);
+		bench_run(model, 50);
+		assert_false(running(model)); /* enable still stands, and does not count */
+		control(model, 0);
+		control(model, 1);
+		assert_true(running(model));
+		model_release(model);
+	}
+}
+
+static void channels_of_safe_torque_off_that_differ_are_a_fault(void **state)
+{
+	(void)state;
+	for (int wrong = 0; wrong < 2; wrong++) {
+		struct model *model = bench_new(wrong ? "torque-off-channel-ignored" : NULL);
+		bench_drive(model, 600, 1);
+		bench_write(model, "fault_box.sto_b", 1);
+		bench_run(model, 50);
+		assert_int_equal(running(model), wrong);
+		bench_run(model, 80);
+		assert_int_equal(code(model), wrong ? 0 : 7);
 		model_release(model);
 	}
 }
@@ -368,6 +417,8 @@ int main(void)
 	    cmocka_unit_test(slow_torque_off_shows_the_code_but_keeps_the_torque),
 	    cmocka_unit_test(latching_and_reset_defects_say_what_they_do),
 	    cmocka_unit_test(a_standing_reset_bit_resets_only_with_its_defect),
+	    cmocka_unit_test(safe_torque_off_takes_the_pulses_off_and_inhibits),
+	    cmocka_unit_test(channels_of_safe_torque_off_that_differ_are_a_fault),
 	    cmocka_unit_test(the_load_never_drives_the_shaft_away_after_a_trip),
 	    cmocka_unit_test(a_load_that_outruns_the_drive_folds_back_below_overspeed),
 	};

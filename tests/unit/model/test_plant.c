@@ -230,6 +230,47 @@ static void braking_raises_the_dc_link_until_the_chopper_holds_it(void **state)
 	model_release(model);
 }
 
+/* Two masses on a spring: f = sqrt(k (1/J1 + 1/J2)) / 2 pi, and the twist under a steady torque. */
+static void a_shaft_with_stiffness_swings_at_its_natural_frequency(void **state)
+{
+	(void)state;
+	struct plant plant = plant_of(4, 0.085, 3.1e-3, 3.1e-3, 0.9, 310);
+	plant.inertia_kgm2 = 0.0011;
+	plant.load_inertia_kgm2 = 0.0009;
+	plant.stiffness_nm_rad = 200;
+	plant.pulses_on = false;
+	plant.twist_rad = 0.01;
+	double energy = plant_stored(&plant), last = plant.twist_rad, first_s = 0, last_s = 0;
+	int crossings = 0;
+	for (int i = 1; i <= 10000; i++) {
+		plant_step(&plant, 1e-5, 1);
+		if (last < 0 && plant.twist_rad >= 0) {
+			last_s = (i - plant.twist_rad / (plant.twist_rad - last)) * 1e-5;
+			if (crossings++ == 0)
+				first_s = last_s;
+		}
+		last = plant.twist_rad;
+	}
+	double expected = sqrt(200 * (1 / 0.0002 + 1 / 0.0009)) / 6.28318530717958647692;
+	assert_near((crossings - 1) / (last_s - first_s), expected, 1e-3, "Hz");
+	assert_near(plant_stored(&plant), energy, 1e-8 * energy, "J"); /* no damping, no friction */
+	assert_near(plant.shaft_torque_nm, 200 * plant.twist_rad, 1e-12, "Nm");
+}
+
+static void an_open_phase_carries_no_current_and_the_others_are_opposite(void **state)
+{
+	(void)state;
+	struct plant plant = plant_of(4, 0.085, 3.1e-3, 4.5e-3, 0.9, 310);
+	plant.speed_rad_s = 30;
+	hold_dq(&plant, 2, 14, 0.02);
+	assert_true(fabs(plant.phase_a[0]) > 0.1);
+	plant.phase_a_open = true;
+	hold_dq(&plant, 2, 14, 0.005);
+	assert_near(plant.phase_a[0], 0, 1e-3, "A");
+	assert_true(fabs(plant.phase_a[1]) > 0.1);
+	assert_near(plant.phase_a[1] + plant.phase_a[2], 0, 1e-3, "A");
+}
+
 /* One thermal body: after a time equal to R C the rise is 1 - 1/e of P R. */
 static void the_winding_warms_with_its_thermal_time_constant(void **state)
 {
@@ -256,6 +297,8 @@ int main(void)
 	    cmocka_unit_test(above_the_dc_voltage_the_diodes_rectify_the_back_emf),
 	    cmocka_unit_test(energy_is_conserved_over_a_cycle),
 	    cmocka_unit_test(braking_raises_the_dc_link_until_the_chopper_holds_it),
+	    cmocka_unit_test(a_shaft_with_stiffness_swings_at_its_natural_frequency),
+	    cmocka_unit_test(an_open_phase_carries_no_current_and_the_others_are_opposite),
 	    cmocka_unit_test(the_winding_warms_with_its_thermal_time_constant),
 	};
 	return RUN_GROUP(tests);
