@@ -10,7 +10,7 @@
 #include <math.h>
 
 #define TWO_PI        6.28318530717958647692
-#define PHASE_WATCH_S 5e-3 /* smoothing of what the phase loss is judged by */
+#define PHASE_WATCH_S 3e-3 /* smoothing of what the phase loss is judged by */
 
 void controller_control(struct controller *controller, int control, int64_t now_ns)
 {

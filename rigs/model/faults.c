@@ -63,7 +63,7 @@ static bool phase_lost(const struct controller *c)
 	double least = use[0] < use[1] ? use[0] : use[1];
 	most = use[2] > most ? use[2] : most;
 	least = use[2] < least ? use[2] : least;
-	return least < 0.15 * most;
+	return least < 0.05 * most;
 }
 
 static bool stands(const struct controller *c, enum fault fault, const struct sensed *sensed)
