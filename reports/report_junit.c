@@ -126,7 +126,7 @@ static void timestamp(struct xml_out *out, const char *utc)
 {
 	static const char shape[] = "0000-00-00T00:00:00";
 	char stamp[sizeof shape];
-	(void)snprintf(stamp, sizeof stamp, "%s", utc);
+	(void)snprintf(stamp, sizeof stamp, "%.19s", utc);
 	bool good = strlen(stamp) == sizeof shape - 1;
 	for (size_t i = 0; good && shape[i]; i++)
 		good = shape[i] == '0' ? stamp[i] >= '0' && stamp[i] <= '9' : stamp[i] == shape[i];
