@@ -125,7 +125,7 @@ static double torque_command(struct controller *c, int64_t now_ns)
 	double gain_share = 1;
 	if (defect_in(c->defects, DEFECT_GAIN_SCHEDULED_WRONG) &&
 	    fabs(c->speed_rad_s) > 0.4 * c->rated_speed_rad_s)
-		gain_share = 0.0625;
+		gain_share = 0.08;
 	return speed_loop_step(&c->speed_loop, ramped_command(c), c->speed_rad_s, gain_share);
 }
 

@@ -15,7 +15,7 @@ DEFECT(SLUGGISH, "sluggish", "step_response",
 DEFECT(INTEGRATOR_MISSING, "integrator-missing", "step_response",
        "the speed loop has no integral part: load leaves a lasting error")
 DEFECT(GAIN_SCHEDULED_WRONG, "gain-scheduled-wrong", "step_response",
-       "above 40 % of rated speed the speed loop's gain falls to a sixteenth")
+       "above 40 % of rated speed the speed loop's gain falls to 8 %")
 /* angle */
 DEFECT(ENCODER_OFFSET, "encoder-offset", "alignment",
        "the encoder offset is wrong by 12 deg electrical; the controller cannot see it")
