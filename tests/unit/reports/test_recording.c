@@ -207,7 +207,7 @@ static void a_journal_cut_at_any_byte_is_read_and_said_to_be_cut(void **state)
 	char *bytes = scratch_read(scratch_path("cut/journal.jsonl"), &length);
 	size_t first = (size_t)(strchr(bytes, '\n') - bytes) + 1;
 	int whole_tests = -1;
-	for (size_t cut = 0; cut < length; cut += cut < first || cut > length - 400 ? 1 : 7) {
+	for (size_t cut = 0; cut<length; cut += cut> length - 150 ? 1 : 37) {
 		struct err err = {0};
 		assert_true(scratch_write(scratch_path("cut/journal.jsonl"), bytes, cut));
 		int rc = reopen(&run, &err);
