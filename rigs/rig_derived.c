@@ -47,9 +47,14 @@ static const struct derive_kind *load_kind(struct rig_loader *loader, const stru
 	const struct derive_kind *const *table = derive_table(&count);
 	struct text all;
 	text_init(&all, 300);
-	for (size_t i = 0; i < count; i++)
-		text_printf(&all, "%s%s", i ? ", " : "", table[i]->name);
-	rig_fault(loader, node, "there is no formula '%s': expected one of %s", name,
+	const char *nearest = NULL;
+	for (size_t i = 0; i < count; i++) {
+		text_printf(&all, "%s%s", i == 0 ? "" : i + 1 < count ? ", " : " or ", table[i]->name);
+		if (!nearest)
+			nearest = text_nearest(name, &table[i]->name, 1);
+	}
+	rig_fault(loader, node, "there is no formula '%s'%s%s%s Expected %s", name,
+	          nearest ? "; did you mean '" : "", nearest ? nearest : "", nearest ? "'?" : ".",
 	          text_string(&all));
 	text_release(&all);
 	return NULL;
