@@ -452,7 +452,7 @@ static int take_locks(struct session *session, struct err *err)
 	return 0;
 }
 
-int session_connect(struct session *session)
+int session_reach(struct session *session)
 {
 	const struct rig *rig = session->rig;
 	struct err err = {0};
@@ -465,9 +465,20 @@ int session_connect(struct session *session)
 	session->links = arena_array(&session->arena, rig->link_count, sizeof(struct link *));
 	if (!session->links)
 		return EXIT_INTERNAL;
-	for (size_t i = 0; i < rig->link_count; i++) {
+	for (size_t i = 0; i < rig->link_count; i++)
 		if (make_link(session, i, &err) < 0)
 			return session_exit_of(&err);
+	return 0;
+}
+
+int session_connect(struct session *session)
+{
+	const struct rig *rig = session->rig;
+	struct err err = {0};
+	int code = session_reach(session);
+	if (code != 0)
+		return code;
+	for (size_t i = 0; i < rig->link_count; i++) {
 		struct err cause = {0};
 		if (link_open(session->links[i], &cause) < 0) {
 			(void)err_set(&err, ERR_LINK, "link %s: %s", rig->links[i].name, cause.message);

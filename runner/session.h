@@ -85,6 +85,8 @@ void session_init(struct session *session, const struct run_options *options);
 void session_release(struct session *session);
 /* Each returns 0, or an exit code after a message on stderr. */
 int session_load(struct session *session);
+/* The first half of session_connect: locks are taken, links made, and none opened yet. */
+int session_reach(struct session *session);
 int session_connect(struct session *session);
 int session_record(struct session *session);
 int session_finish(struct session *session);
