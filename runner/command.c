@@ -96,6 +96,8 @@ static enum progress take_reply(struct conductor *conductor, struct command_op *
 		               reply->exception, modbus_exception_name(reply->exception));
 		return fail(op, name, what);
 	}
+	if (reply->status == LINK_REFUSED)
+		return fail(op, name, reply->message);
 	if (!good && ++op->tries >= TRIES_MOST)
 		return fail(op, name, reply->message[0] ? reply->message : "no reply");
 	switch ((enum stage)op->stage) {
@@ -170,7 +172,7 @@ enum progress command_tick(struct conductor *conductor, struct command_op *op, b
 		return PROGRESS_FAILED;
 	}
 	conductor->anything_commanded = true;
-	worker_post(worker, &request, channel->device);
+	worker_post(worker, &request, channel->device, false);
 	op->posted = true;
 	if (op->deadline_ns < *due_ns)
 		*due_ns = op->deadline_ns;

@@ -437,8 +437,6 @@ static void abort_run(struct conductor *conductor, int64_t now_ns)
 	struct journal_event event = conductor_event(conductor, JOURNAL_ABORT, now_ns);
 	(void)snprintf(event.text, sizeof event.text, "%s", reason);
 	conductor_tell(conductor, &event);
-	for (size_t i = 0; i < conductor->rig->link_count; i++)
-		worker_break_off(conductor->workers[i], now_ns, 20 * NS_PER_MS);
 	if (conductor->before_watch >= 0)
 		worker_watch_remove(conductor->workers[conductor->before_worker], conductor->before_watch);
 	conductor->before_watch = -1;

@@ -194,8 +194,22 @@ static enum progress again(struct conductor *conductor, int64_t now_ns, int64_t 
 	return PROGRESS_RUNNING;
 }
 
+/*
+ * A reply that was awaited when the run was stopped must not hold up the safe
+ * state for its whole timeout.
+ */
+static void free_links(struct conductor *conductor, int64_t now_ns, int64_t *due_ns)
+{
+	for (size_t i = 0; conductor->rest_last && i < conductor->rig->link_count; i++)
+		if (worker_break_off(conductor->workers[i], conductor->rest_begin_ns, now_ns,
+		                     20 * NS_PER_MS) &&
+		    now_ns + 5 * NS_PER_MS < *due_ns)
+			*due_ns = now_ns + 5 * NS_PER_MS;
+}
+
 enum progress rest_tick(struct conductor *conductor, int64_t now_ns, int64_t *due_ns)
 {
+	free_links(conductor, now_ns, due_ns);
 	if (conductor->rest_stage == REST_STEPS) {
 		if (walk_tick(conductor, &conductor->walk, true, now_ns, due_ns) == PROGRESS_RUNNING) {
 			/* A step may wait long (an await of 5 s); the rig's time bounds the whole. */

@@ -359,7 +359,7 @@ static enum progress attempt_tick(struct conductor *conductor, struct walk *walk
 			return PROGRESS_FAILED;
 		}
 		conductor->anything_commanded = true;
-		worker_post(worker, &request, device);
+		worker_post(worker, &request, device, true);
 		walk->stage = 1;
 		return PROGRESS_RUNNING;
 	}

@@ -32,8 +32,9 @@ struct worker {
 	const struct rig *rig;
 	/* tick only */
 	struct link *link;
-	bool open, busy, busy_is_job;
-	int64_t busy_since_ns, next_open_ns, open_pause_ns;
+	struct guard guard;
+	bool open, busy, busy_is_job, job_is_attempt;
+	int64_t next_open_ns, open_pause_ns;
 	int busy_device;
 	struct link_request request;
 	struct link_reply reply;
@@ -49,7 +50,7 @@ struct worker {
 	pthread_cond_t cond;
 	bool woken, quit, rest, renew, fresh;
 	enum job_state job;
-	bool job_dropped;
+	bool job_dropped, job_attempt;
 	int job_device;
 	struct link_request job_request;
 	struct link_reply job_reply;
@@ -100,7 +101,8 @@ int worker_new(const struct worker_config *config, struct worker **ret_worker, s
 	(void)pthread_cond_init(&worker->cond, NULL);
 	if (!worker->devices || !worker->latest || !worker->row ||
 	    ring_init(&worker->rows, row_size, 16384, reterr) < 0 ||
-	    ring_init(&worker->events, sizeof(struct journal_event), 256, reterr) < 0) {
+	    ring_init(&worker->events, sizeof(struct journal_event), 256, reterr) < 0 ||
+	    guard_init(&worker->guard, rig, reterr) < 0) {
 		(void)err_set(reterr, ERR_NOMEM, "no memory for the worker of a link");
 		worker->link = NULL; /* stays the caller's */
 		worker_free(worker);
@@ -119,6 +121,7 @@ void worker_free(struct worker *worker)
 	if (!worker)
 		return;
 	link_release(worker->link);
+	guard_release(&worker->guard);
 	ring_release(&worker->rows);
 	ring_release(&worker->events);
 	free(worker->devices);
@@ -298,7 +301,8 @@ static void finish(struct worker *worker, int64_t now_ns)
 	struct device_state *device = &worker->devices[worker->busy_device];
 	device->last_sent_ns = reply->sent_ns;
 	device->last_received_ns = reply->received_ns;
-	if (answered)
+	/* Of a poll an exception is no measurement; of a command it is an answer. */
+	if (reply->status == LINK_OK || (answered && worker->busy_is_job))
 		device->last_good_ns = reply->received_ns;
 	device->pause_until_ns =
 	    reply->received_ns + worker->rig->devices[worker->busy_device].minimum_pause_ns;
@@ -410,7 +414,11 @@ static void adopt_plan(struct worker *worker, int64_t now_ns)
 	unlock(worker);
 }
 
-/* A polled device that has given no good answer for too long ends the run. */
+/*
+ * A polled device ends the run when it has given no good answer for too long,
+ * or when its life counter stands: a frozen register image looks like a calm
+ * bench. Mutex held.
+ */
 static void check_stale(struct worker *worker, int64_t now_ns)
 {
 	const struct poll_plan *plan = worker->plan;
@@ -422,8 +430,19 @@ static void check_stale(struct worker *worker, int64_t now_ns)
 			const struct device_state *device = &worker->devices[index];
 			int64_t since = device->last_good_ns > worker->plan_since_ns ? device->last_good_ns
 			                                                             : worker->plan_since_ns;
-			if (!device->silent && now_ns - since > worker->rig->stale_after_ns &&
-			    now_ns - since > 2 * plan->groups[g].period_ns)
+			if (device->silent)
+				continue;
+			int64_t patience = worker->rig->stale_after_ns > 2 * plan->groups[g].period_ns
+			                       ? worker->rig->stale_after_ns
+			                       : 2 * plan->groups[g].period_ns;
+			if (life_stands(worker, index, now_ns) &&
+			    now_ns - device->life_moved_ns >
+			        worker->rig->devices[index].life_within_ns + patience &&
+			    now_ns - worker->plan_since_ns > patience)
+				(void)stop_raise(worker->config.stop, "the life counter of %s stands for %.3g s",
+				                 worker->rig->devices[index].name,
+				                 (double)(now_ns - device->life_moved_ns) / 1e9);
+			if (now_ns - since > patience)
 				(void)stop_raise(worker->config.stop,
 				                 "link %s: no good answer from %s for %.3g s%s%s",
 				                 link_of(worker)->name, worker->rig->devices[index].name,
@@ -470,6 +489,21 @@ static bool ensure_open(struct worker *worker, int64_t now_ns, int64_t *due)
 	return true;
 }
 
+/* Nothing goes out that the rig does not allow; true where the request may. */
+static bool guarded(struct worker *worker, int device, bool resting, int64_t now_ns)
+{
+	struct err err = {0};
+	if (worker->busy_is_job && worker->job_is_attempt)
+		return true;
+	if (guard_pass(&worker->guard, device, &worker->request, resting, now_ns, &err) == 0)
+		return true;
+	(void)stop_raise(worker->config.stop, "a command was held back: %.200s", err.message);
+	worker->reply =
+	    (struct link_reply){.status = LINK_REFUSED, .sent_ns = now_ns, .received_ns = now_ns};
+	(void)snprintf(worker->reply.message, sizeof worker->reply.message, "%.150s", err.message);
+	return false;
+}
+
 static void begin(struct worker *worker, int device, int64_t now_ns)
 {
 	struct err err = {0};
@@ -477,10 +511,14 @@ static void begin(struct worker *worker, int device, int64_t now_ns)
 	worker->shared_busy = true;
 	worker->shared_busy_device = device;
 	worker->shared_busy_since_ns = now_ns;
+	bool resting = worker->rest;
 	unlock(worker);
 	worker->busy = true;
 	worker->busy_device = device;
-	worker->busy_since_ns = now_ns;
+	if (!guarded(worker, device, resting, now_ns)) {
+		finish(worker, now_ns);
+		return;
+	}
 	if (link_begin(worker->link, &worker->request, now_ns, &err) == 0)
 		return;
 	worker->reply.status = LINK_LOST;
@@ -502,6 +540,7 @@ static bool take_job(struct worker *worker, int64_t now_ns, int *device, int64_t
 		} else {
 			worker->job = JOB_RUNNING;
 			worker->request = worker->job_request;
+			worker->job_is_attempt = worker->job_attempt;
 			*device = worker->job_device;
 			taken = true;
 		}
@@ -601,9 +640,11 @@ void worker_quit(struct worker *worker)
 
 /* ---- the conductor's side ---------------------------------------------- */
 
-void worker_post(struct worker *worker, const struct link_request *request, int device)
+void worker_post(struct worker *worker, const struct link_request *request, int device,
+                 bool attempt)
 {
 	lock(worker);
+	worker->job_attempt = attempt;
 	worker->job = JOB_POSTED;
 	worker->job_dropped = false;
 	worker->job_device = device;
@@ -741,13 +782,21 @@ bool worker_fresh(struct worker *worker)
 	return fresh;
 }
 
-void worker_break_off(struct worker *worker, int64_t now_ns, int64_t longer_than_ns)
+bool worker_break_off(struct worker *worker, int64_t since_ns, int64_t now_ns,
+                      int64_t longer_than_ns)
 {
 	lock(worker);
-	bool blocked = worker->shared_busy && now_ns - worker->shared_busy_since_ns > longer_than_ns;
+	bool old = worker->shared_busy && worker->shared_busy_since_ns <= since_ns;
+	bool blocked = old && now_ns - worker->shared_busy_since_ns > longer_than_ns;
 	unlock(worker);
 	if (blocked)
 		link_interrupt(worker->link);
+	return old;
+}
+
+struct link *worker_link(struct worker *worker)
+{
+	return worker->link;
 }
 
 double worker_latest(struct worker *worker, int channel)

@@ -15,6 +15,7 @@
 #include <pthread.h>
 
 #include "clock.h"
+#include "guard.h"
 #include "journal.h"
 #include "plan.h"
 #include "ring.h"
@@ -77,8 +78,13 @@ int64_t worker_tick(struct worker *worker, int64_t now_ns);
 void worker_loop(struct worker *worker);
 void worker_quit(struct worker *worker);
 
-/* One job at a time: post, then ask until it is done. */
-void worker_post(struct worker *worker, const struct link_request *request, int device);
+/*
+ * One job at a time: post, then ask until it is done. A write that the rig
+ * does not allow is never sent (rigs/guard.h) and ends the run; attempt: the
+ * request is one that the rig's `attempts` allow although it must be refused.
+ */
+void worker_post(struct worker *worker, const struct link_request *request, int device,
+                 bool attempt);
 bool worker_done(struct worker *worker, struct link_reply *ret_reply);
 /* Gives up waiting: a job not yet begun is dropped, a running one is broken off. */
 void worker_drop_job(struct worker *worker);
@@ -102,8 +108,14 @@ void worker_rest_mode(struct worker *worker, bool on);
 /* Closes the connection and makes a new one; worker_fresh() is true once it stands. */
 void worker_renew(struct worker *worker);
 bool worker_fresh(struct worker *worker);
-/* Breaks off a read that has been waiting for longer than that. */
-void worker_break_off(struct worker *worker, int64_t now_ns, int64_t longer_than_ns);
+/*
+ * Breaks off a transaction that began before since_ns and has been waiting for
+ * longer than that. True while one from before still runs.
+ */
+bool worker_break_off(struct worker *worker, int64_t since_ns, int64_t now_ns,
+                      int64_t longer_than_ns);
+/* The link, for use after the worker's thread has ended. */
+struct link *worker_link(struct worker *worker);
 
 double worker_latest(struct worker *worker, int channel);
 struct worker_counts worker_counts(struct worker *worker);

@@ -65,6 +65,7 @@ enum link_status {
 	LINK_GARBLED,   /* CRC, length, unit, function or transaction do not match */
 	LINK_LOST,      /* the connection is gone, or could not be made */
 	LINK_STOPPED,   /* broken off by link_interrupt() */
+	LINK_REFUSED,   /* never sent: the rig does not allow it */
 };
 
 struct link_reply {
