@@ -8,11 +8,9 @@
 
 #include <stdio.h>
 
-#include "text.h"
-
 enum { NUMBER_SIZE = 64 };
 
-/* A number with its unit in as many digits as carry meaning beside `step`. */
+/* A number in the unit that the user wrote. */
 static const char *shown(double value, const struct metric *metric, const struct limit *limit,
                          char *buffer)
 {
@@ -72,20 +70,16 @@ static void limit_text(const struct metric *metric, const struct limit *limit, c
 static void reason_yes_no(const struct metric *metric, const struct limit *limit,
                           enum verdict verdict, char *reason, size_t size)
 {
-	const char *colon = metric->note[0] ? ": " : "";
+	const char *name = metric->kind->name, *note = metric->note;
+	const char *colon = note[0] ? ": " : "";
 	if (verdict == VERDICT_INCONCLUSIVE)
-		(void)snprintf(reason, size, "%s is not known%s%s", metric->kind->name, colon,
-		               metric->note);
+		(void)snprintf(reason, size, "%s is not known%s%s", name, colon, note);
+	else if (verdict == VERDICT_FAIL)
+		(void)snprintf(reason, size, "%s is %s, required is %s%s%s", name, yes_no(metric->value),
+		               yes_no(limit->max), colon, note);
 	else
-		(void)snprintf(reason, size, "%s is %s%s%s%s", metric->kind->name, yes_no(metric->value),
-		               verdict == VERDICT_FAIL ? ", required is " : "",
-		               verdict == VERDICT_FAIL ? yes_no(limit->max) : "", "");
-	if (verdict == VERDICT_FAIL && metric->note[0]) {
-		size_t used = 0;
-		while (used < size && reason[used])
-			used++;
-		(void)snprintf(reason + used, size - used, ": %s", metric->note);
-	}
+		(void)snprintf(reason, size, "%s is %s, as required%s%s", name, yes_no(metric->value),
+		               colon, note);
 }
 
 static void reason_number(const struct metric *metric, const struct limit *limit,

@@ -23,7 +23,7 @@ struct derive_kind {
 	const char *name;                       /* "angle_of" */
 	const char *text;                       /* one line with the formula */
 	const char *inputs[DERIVE_INPUTS_MOST]; /* keys: "x", "y"; NULL ends */
-	size_t required;                        /* how many of them must be given */
+	size_t required;                        /* how many of them must be given: the first ones */
 	/*
 	 * Checks the inputs' dimensions (count of them given) and gives that of
 	 * the result; -1 with a message where they do not fit.
@@ -38,13 +38,17 @@ struct derive_kind {
 struct derivation {
 	const struct derive_kind *kind;
 	int inputs[DERIVE_INPUTS_MOST]; /* channel indices; -1 not given */
-	double offset;                  /* SI; field `offset` of the rig file */
+	double offset; /* SI, in the result's dimension: subtracted; field `offset` of the rig file */
 };
 
 const struct derive_kind *const *derive_table(size_t *ret_count);
 const struct derive_kind *derive_find(const char *name, size_t length);
 
-/* One value in the unit of `channel`, from input values in their own units. */
+/*
+ * One value in the unit of `channel`, from input values in their own units.
+ * inputs_info and input_values are in the derivation's order. NaN where an
+ * input that is given has no value.
+ */
 double derive_value(const struct derivation *derivation, const struct channel_info *inputs_info,
                     const double *input_values, const struct channel_info *channel,
                     const struct machine *machine);

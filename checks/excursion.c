@@ -17,6 +17,7 @@
 
 struct excursion {
 	bool found;    /* a parabola stands out of the noise, or there is no noise */
+	bool exact;    /* the latter */
 	size_t row;    /* index of the middle */
 	double height; /* beyond the final value, channel's unit; may be negative */
 	double random_u, model_u, rounding_u;
@@ -81,7 +82,7 @@ static void without_noise(const struct search *search, struct excursion *ret)
 	double rivals;
 	const struct stretch *rows = &search->response->rows;
 	size_t row = largest_mean(search, 0, 0, &ret->height, &rivals);
-	ret->found = true;
+	ret->found = ret->exact = true;
 	ret->row = row;
 	ret->t = stretch_time(rows, row);
 	ret->t_low = ret->t - stretch_time_u(rows, row) * sqrt(3);
@@ -160,7 +161,9 @@ static void find(const struct search *search, struct excursion *ret)
 	*ret = (struct excursion){0};
 	size_t count = search->end - search->begin;
 	const struct stretch *rows = &search->response->rows;
-	if (search->sigma == 0 || count < 3) {
+	/* Rounding of the arithmetic is no noise. */
+	double step = fabs(search->response->final - search->response->initial);
+	if (search->sigma <= 1e-9 * step || count < 3) {
 		without_noise(search, ret);
 		return;
 	}
@@ -214,7 +217,7 @@ static void peak_time(const struct response *response, const struct excursion *p
 	budget_other(&budget, stretch_time_u(&response->rows, peak->row));
 	budget_other(&budget, response->mark_half / sqrt(3));
 	double expanded = budget_expanded(&budget), half = response->mark_half;
-	bool exact = response->noise == 0;
+	bool exact = peak->exact;
 	double low = exact ? peak->t_low - half : fmax(peak->t_low - half, peak->t - expanded);
 	double high = exact ? peak->t_high + half : fmin(peak->t_high + half, peak->t + expanded);
 	ret->known = true;

@@ -7,7 +7,6 @@
 #include "window.h"
 
 #include <stdio.h>
-#include <string.h>
 
 static double ms(int64_t ns)
 {
