@@ -16,8 +16,8 @@
 
 enum { PANELS_MOST = 3, POINTS_MOST = 12, TICKS_MOST = 12, LABELS_ROWS = 2 };
 
-static const double WIDTH = 760, LEFT = 96, RIGHT = 14, TOP = 40, HEIGHT = 150, GAP = 30,
-                    BOTTOM = 42;
+static const double WIDTH = 760, LEFT = 96, RIGHT = 22, TOP = 40, HEIGHT = 150, GAP = 30,
+                    BOTTOM = 26;
 
 struct chart {
 	struct xml_out *out;
@@ -344,7 +344,8 @@ static void limit_lines(const struct chart *chart, const struct chart_scale *sca
 				if (level) {
 					double y = chart_y(scale, values[i]);
 					line(chart->out, scale->x0, y, scale->x1, y, "#9b2335", "2 3");
-					label(chart->out, scale->x1 - 4, y - 3, "end", "#9b2335", text);
+					label(chart->out, scale->x1 - 4, i == 0 ? y + 11 : y - 4, "end", "#9b2335",
+					      text);
 					continue;
 				}
 				double x = chart_x(scale, (double)mark->latest_ns + values[i] * 1e9);
@@ -411,7 +412,7 @@ static void metric_points(const struct chart *chart, const struct chart_scale *s
 			double y = on_axis ? chart_y(scale, point->level) : scale->y_low - 3;
 			rectangle(chart->out, x1 - 1.5, y - 2.5, fmax(x2 - x1, 0) + 3, 5, "#111111", "0.75");
 			(void)snprintf(number, sizeof number, "%d", ++count);
-			label(chart->out, x2 + 4, y - 4, "start", "#111111", number);
+			label(chart->out, (x1 + x2) / 2, y - 6, "middle", "#111111", number);
 		}
 	}
 }

@@ -138,6 +138,9 @@ static void row_of(struct xml_out *out, const char *cell, const char *const *tex
 		xml_open(out, cell);
 		if (strcmp(cell, "th") == 0)
 			xml_attr(out, "scope", "col");
+		/* Of the links' counts: columns of numbers. */
+		if (strcmp(cell, "th") == 0 && count == 6 && i > 0)
+			xml_attr(out, "class", "number");
 		xml_text(out, texts[i]);
 		xml_close(out);
 	}
@@ -442,6 +445,7 @@ static int html_write(const struct run_result *run, const struct run_folder *fol
 		return -1;
 	xml_raw(&out, "<!DOCTYPE html>\n");
 	xml_open(&out, "html");
+	out.lines = true;
 	xml_attr(&out, "xmlns", "http://www.w3.org/1999/xhtml");
 	xml_attr(&out, "lang", "en");
 	head(&out, run);

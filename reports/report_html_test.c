@@ -103,6 +103,8 @@ void html_tests(struct xml_out *out, const struct run_result *run)
 		for (size_t i = 0; i < 5; i++) {
 			xml_open(out, "th");
 			xml_attr(out, "scope", "col");
+			if (i == 4)
+				xml_attr(out, "class", "number");
 			xml_text(out, heads[i]);
 			xml_close(out);
 		}
@@ -254,6 +256,8 @@ static void metric_table(struct xml_out *out, const struct check_result *check)
 	for (size_t i = 0; i < 7; i++) {
 		xml_open(out, "th");
 		xml_attr(out, "scope", "col");
+		if (i == 1 || i == 2)
+			xml_attr(out, "class", "number");
 		xml_text(out, heads[i]);
 		xml_close(out);
 	}

@@ -193,6 +193,8 @@ static int junit_write(const struct run_result *run, const struct run_folder *fo
 	struct xml_out out;
 	if (xml_out_init(&out, reterr) < 0)
 		return -1;
+	/* A line an element: people look into this file too, and compare two of them. */
+	(void)xmlTextWriterSetIndent(out.writer, 1);
 	xml_raw(&out, "<?xml version=\"1.0\" encoding=\"UTF-8\"?>\n");
 	xml_open(&out, "testsuites");
 	for (size_t i = 0; i < run->suite_count; i++)

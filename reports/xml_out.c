@@ -83,8 +83,23 @@ static void clean(struct text *text, const char *bytes, bool one_line)
 			text->data[i] = ' ';
 }
 
+/* Elements before which white space means nothing, so that a page is not one long line. */
+static bool is_block(const char *element)
+{
+	static const char *const blocks[] = {"article", "body",  "dl",    "dt",   "figure",  "h1",
+	                                     "h2",      "h3",    "h4",    "head", "header",  "li",
+	                                     "main",    "meta",  "ol",    "p",    "section", "svg",
+	                                     "table",   "tbody", "thead", "tr",   "ul"};
+	for (size_t i = 0; i < sizeof blocks / sizeof *blocks; i++)
+		if (strcmp(blocks[i], element) == 0)
+			return true;
+	return false;
+}
+
 void xml_open(struct xml_out *out, const char *element)
 {
+	if (out->lines && is_block(element))
+		note(out, xmlTextWriterWriteString(out->writer, U("\n")));
 	note(out, xmlTextWriterStartElement(out->writer, U(element)));
 }
 

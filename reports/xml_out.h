@@ -23,6 +23,7 @@ struct xml_out {
 	xmlTextWriterPtr writer;
 	xmlBufferPtr buffer;
 	bool failed;
+	bool lines; /* blocks of HTML each begin a line */
 };
 
 int xml_out_init(struct xml_out *out, struct err *reterr);
