@@ -60,12 +60,14 @@ void controller_start(struct controller *controller, const struct controller_tun
 	faults_start(c);
 }
 
-static void believed_angle(struct controller *c, const struct encoder *encoder)
+static void believed_angle(struct controller *c, const struct encoder *encoder, int hall_sector)
 {
 	c->counts = encoder->counter;
 	/* The middle of the count. */
 	double mech = (c->counts + 0.5) * TWO_PI / c->counts_per_turn;
 	double elec = c->pole_pairs * mech + c->offset_elec_rad;
+	if (c->block)
+		elec = hall_sector * TWO_PI / 6;
 	if (defect_in(c->defects, DEFECT_SINE_ERROR))
 		elec += 10 * TWO_PI / 360 * sin(mech);
 	if (defect_in(c->defects, DEFECT_DIRECTION_SWAPPED))
@@ -83,7 +85,7 @@ static void watch_phases(struct controller *c, double a, double b)
 
 static void measure(struct controller *c, const struct sensed *sensed)
 {
-	believed_angle(c, sensed->encoder);
+	believed_angle(c, sensed->encoder, sensed->hall_sector);
 	double speed = speed_meter_step(&c->meter, sensed->encoder, c->counts_per_turn, sensed->now_s);
 	double a = sensed->phase_a, b = sensed->phase_b;
 	if (defect_in(c->defects, DEFECT_DIRECTION_SWAPPED)) {
@@ -138,6 +140,7 @@ void controller_step(struct controller *controller, const struct sensed *sensed)
 		c->current_d_command_a = c->current_q_command_a = 0;
 		c->voltage_d_v = c->voltage_q_v = c->voltage_alpha_v = c->voltage_beta_v = 0;
 		c->duty[0] = c->duty[1] = c->duty[2] = 0.5;
+		c->floating = 0;
 		return;
 	}
 	current_commands(c, torque_command(c, sensed->now_ns));
@@ -146,5 +149,7 @@ void controller_step(struct controller *controller, const struct sensed *sensed)
 		double b = c->duty[1];
 		c->duty[1] = c->duty[2];
 		c->duty[2] = b;
+		if (c->floating > 1)
+			c->floating = 5 - c->floating;
 	}
 }

@@ -17,6 +17,7 @@
 
 #include "model_modulation.h"
 
+#define PI        3.14159265358979323846
 #define INV_SQRT3 0.57735026918962576451
 /* How fast the d current follows a voltage that is too high: a decade below the current loops. */
 #define WEAKENING_RAD_S 150.0
@@ -83,7 +84,8 @@ void current_commands(struct controller *controller, double torque_nm)
 		current_for_torque(c, torque_nm, &c->torque_q_a, &best);
 		d += best;
 	}
-	d += field_weakening(c);
+	if (!c->block)
+		d += field_weakening(c);
 	double most_d = 0.95 * c->current_most_a;
 	d = d < -most_d ? -most_d : d;
 	double q = torque_nm / (1.5 * c->pole_pairs * (c->flux_wb + (c->ld_h - c->lq_h) * d));
@@ -96,7 +98,8 @@ static void turn_and_modulate(struct controller *c, double speed_elec)
 {
 	/* The voltage takes effect from one to two periods after this instant. */
 	double sine, cosine;
-	sincos(c->angle_elec_rad + 1.5 * speed_elec * c->period_s, &sine, &cosine);
+	double ahead = c->block ? 0 : 1.5 * speed_elec * c->period_s;
+	sincos(c->angle_elec_rad + ahead, &sine, &cosine);
 	c->voltage_alpha_v = c->voltage_d_v * cosine - c->voltage_q_v * sine;
 	c->voltage_beta_v = c->voltage_d_v * sine + c->voltage_q_v * cosine;
 	double dc_v = c->dc_v > 1 ? c->dc_v : 1;
@@ -107,9 +110,36 @@ static void turn_and_modulate(struct controller *c, double speed_elec)
 		c->duty[1] *= 0.92;
 }
 
+/*
+ * Block commutation: the current vector stands 90 deg from the middle of the
+ * Hall sector, so 120 deg from the rotor when it enters the sector and 60 when
+ * it leaves. Two phases carry the current, one control loop is enough; the
+ * third phase is off. Of the back-EMF the mean over the sector, 3/pi, is fed forward.
+ */
+static void block_step(struct controller *c)
+{
+	static const int OFF[3] = {1, 3, 2};
+	struct current_loops *loops = &c->current_loops;
+	double speed_elec = c->pole_pairs * c->speed_rad_s;
+	double most = c->dc_v * INV_SQRT3;
+	double p = loops->gain_q * (c->current_q_command_a - c->current_q_a);
+	double wanted = p + loops->integral_q + 0.95492965855137201 * speed_elec * c->flux_wb;
+	double q = wanted > most ? most : wanted < -most ? -most : wanted;
+	loops->integral_q += loops->integral_share_q * (p + q - wanted);
+	c->voltage_d_v = 0;
+	c->voltage_q_v = q;
+	long sector = lround(c->angle_elec_rad * 3 / PI) % 3;
+	c->floating = OFF[sector < 0 ? sector + 3 : sector];
+	turn_and_modulate(c, speed_elec);
+}
+
 void current_loops_step(struct controller *controller)
 {
 	struct controller *c = controller;
+	if (c->block) {
+		block_step(c);
+		return;
+	}
 	struct current_loops *loops = &c->current_loops;
 	double speed_elec = c->pole_pairs * c->speed_rad_s;
 	double most = c->dc_v * INV_SQRT3;

@@ -9,7 +9,7 @@
 
 static const struct model_defect ROWS[] = {
 #define DEFECT(identifier, row_name, check, line)                                                  \
-	{.name = row_name, .text = line, .caught_by = check},
+	{.name = (row_name), .text = (line), .caught_by = (check)},
 #include "model_defect_list.h"
 #undef DEFECT
 };

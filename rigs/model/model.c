@@ -142,6 +142,7 @@ static void init_controller(struct model *model)
 	controller->overvoltage_v = c->overvoltage_v;
 	controller->undervoltage_v = 0.75 * c->dc_voltage_v;
 	controller->rated_current_a = c->rated_current_a;
+	controller->block = c->commutation == MODEL_BLOCK;
 	controller->ramp_rad_s2 = c->speed_ramp_rad_s2;
 	controller->overtemperature_c = c->overtemperature_c;
 	controller->rated_speed_rad_s = c->rated_speed_rad_s;
@@ -221,6 +222,14 @@ static double current_sensor(struct model *model, int phase)
 	return step > 0 ? step * rint(value / step) : value;
 }
 
+/* The sector that the Hall sensors show; the defect encoder-offset has turned them on the shaft. */
+static int hall(const struct model *model)
+{
+	double turned = defect_in(model->config.defects, DEFECT_ENCODER_OFFSET) ? 12.0 / 60 : 0;
+	double sixths = model->plant.pole_pairs * model->plant.angle_rad * (3 / 3.14159265358979323846);
+	return (int)floor(sixths + 0.5 + turned) % 6;
+}
+
 static void control(struct model *model)
 {
 	struct plant *plant = &model->plant;
@@ -233,6 +242,7 @@ static void control(struct model *model)
 	/* A test winding through the comparator's own sensor carries twice the limit. */
 	if (box->relays[RELAY_CURRENT_SURGE].closed)
 		comparator += 2 * model->config.overcurrent_a;
+	int hall_sector = hall(model);
 	struct sensed sensed = {
 	    .now_ns = model->grid_ns,
 	    .now_s = now_s,
@@ -242,6 +252,7 @@ static void control(struct model *model)
 	    .dc_v = plant->dc_v,
 	    .winding_c = plant->winding_c,
 	    .encoder = &model->encoder,
+	    .hall_sector = hall_sector,
 	    .torque_off = {box->relays[RELAY_STO_A].closed, box->relays[RELAY_STO_B].closed},
 	};
 	/* A resistor in the place of the winding's sensor. */
@@ -275,12 +286,15 @@ static void step(struct model *model)
 	struct fault_box *box = &model->fault_box;
 	struct controller *controller = &model->controller;
 	double duty[3] = {controller->duty[0], controller->duty[1], controller->duty[2]};
+	int floating = controller->floating;
 
 	fault_box_step(box, model->grid_ns);
 	double surge = box->relays[RELAY_SUPPLY_SURGE].closed ? 1.4 : 1;
 	double sag = box->relays[RELAY_SUPPLY_SAG].closed ? 0.6 : 1;
 	plant->supply_v = model->config.dc_voltage_v * surge * sag;
-	plant->phase_a_open = box->relays[RELAY_PHASE_OPEN].closed;
+	bool a_open = box->relays[RELAY_PHASE_OPEN].closed;
+	plant->open_phase = a_open ? 1 : floating;
+	plant->no_path = a_open && floating > 1;
 	load_step(&model->load, model->grid_ns, controller->pulses_on);
 	plant->pulses_on = controller->pulses_on;
 	double copper_before = plant->energies.copper;

@@ -45,6 +45,8 @@ struct model_signal {
 	const char *text;   /* one line */
 };
 
+enum model_commutation { MODEL_SINUSOIDAL = 0, MODEL_BLOCK };
+
 /* What may be set in `model: parameters:`; the table gives keys, dimensions, defaults. */
 struct model_config {
 	/* nameplate, filled from the rig's machine section by the caller */
@@ -65,6 +67,7 @@ struct model_config {
 	double current_offset_a, current_gain_error, current_step_a;
 	double current_noise_a, torque_noise_nm, speed_noise_rad_s;
 	double ambient_c;
+	int commutation;                      /* enum model_commutation */
 	const char *firmware, *serial_number; /* texts that it answers */
 	uint64_t seed;
 	uint64_t defects; /* bit i: row i of model_defects() */

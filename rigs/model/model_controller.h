@@ -58,6 +58,7 @@ struct sensed {
 	double phase_a, phase_b; /* from the current sensors */
 	double comparator_a;     /* largest phase current that the overcurrent comparator sees */
 	double dc_v, winding_c;  /* from their sensors */
+	int hall_sector;         /* 0 to 5: the rotor within 30 deg electrical of that many times 60 */
 	bool torque_off[2];      /* the channels of safe torque off that are open */
 	struct encoder *encoder; /* the controller may set its counter */
 };
@@ -97,6 +98,7 @@ struct controller {
 	double overcurrent_a, overvoltage_v, undervoltage_v, overtemperature_c;
 	double rated_current_a, rated_speed_rad_s, speed_most_rad_s;
 	double offset_elec_rad; /* of the encoder; what is stored, not what is true */
+	bool block;             /* two phases on, by Hall sensors, instead of sinusoidal currents */
 	double null_share;
 	double weakening_share; /* of the linear voltage limit, above which the field is weakened */
 	struct speed_loop speed_loop;
@@ -131,6 +133,7 @@ struct controller {
 	double weakening_d_a, wanted_v; /* field weakening; voltage wanted before its limit */
 	double voltage_d_v, voltage_q_v, voltage_alpha_v, voltage_beta_v;
 	double duty[3];
+	int floating; /* block commutation: 1 to 3, the phase that is off; 0: none */
 };
 
 struct controller_tuning {

@@ -43,7 +43,8 @@ struct plant {
 	/* what holds during a step */
 	double supply_v;
 	double duty_alpha, duty_beta; /* voltage vector / DC voltage */
-	bool pulses_on, chopper_closed, phase_a_open;
+	bool pulses_on, chopper_closed, no_path;
+	int open_phase; /* 1 to 3: phase a, b or c carries no current; 0: none */
 	const struct load_machine *load;
 
 	/* state */

@@ -12,14 +12,17 @@
 
 #define QUANTITY(name, dim, low, high, standard, member, line)                                     \
 	{                                                                                              \
-		.key = name, .kind = FIELD_QUANTITY, .dimension = &(dim), .least = low, .most = high,      \
-		.fallback = standard, .offset = offsetof(struct model_config, member), .text = line        \
+		.key = (name), .kind = FIELD_QUANTITY, .dimension = &(dim), .least = (low),                \
+		.most = (high), .fallback = (standard), .offset = offsetof(struct model_config, member),   \
+		.text = (line)                                                                             \
 	}
 #define TEXT(name, standard, member, line)                                                         \
 	{                                                                                              \
-		.key = name, .kind = FIELD_TEXT, .fallback = standard,                                     \
-		.offset = offsetof(struct model_config, member), .text = line                              \
+		.key = (name), .kind = FIELD_TEXT, .fallback = (standard),                                 \
+		.offset = offsetof(struct model_config, member), .text = (line)                            \
 	}
+
+static const char *const COMMUTATIONS[] = {"sinusoidal", "block", NULL};
 
 /* clang-format off */
 static const struct field FIELDS[] = {
@@ -59,6 +62,9 @@ static const struct field FIELDS[] = {
 	         "of the speed loop, 1/(2 T) in the symmetric optimum; 0: by its lags"),
 	QUANTITY("current_bandwidth", DIM_SPEED, 0, 1e5, "0 rad/s", current_bandwidth_rad_s,
 	         "of the current loops, 1/(2 T) in the magnitude optimum; 0: by the control period"),
+	{.key = "commutation", .kind = FIELD_CHOICE, .choices = COMMUTATIONS, .fallback = "sinusoidal",
+	 .offset = offsetof(struct model_config, commutation),
+	 .text = "sinusoidal: field-oriented control; block: two phases on, switched by Hall sensors"},
 	QUANTITY("current_limit", DIM_CURRENT_AMPLITUDE, 0, 1e4, "0 A_peak", current_limit_a,
 	         "of the controller; 0: 1.6 times the rated current"),
 	QUANTITY("speed_ramp", DIM_ACCELERATION, 0, 1e7, "0 rad/s2", speed_ramp_rad_s2,
@@ -126,6 +132,8 @@ void model_config_init(struct model_config *config)
 		struct quantity quantity;
 		if (field->kind == FIELD_TEXT)
 			*(const char **)at = field->fallback;
+		else if (field->kind == FIELD_CHOICE)
+			*(int *)at = MODEL_SINUSOIDAL;
 		else if (quantity_parse(field->fallback, strlen(field->fallback), NULL, field->dimension,
 		                        &quantity, NULL) == 0)
 			*(double *)at = quantity_si(quantity);

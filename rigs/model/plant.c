@@ -76,18 +76,23 @@ static inline void diodes(const struct state *x, double *ret_d, double *ret_q)
 }
 
 /*
- * Phase a is open: its terminal takes the voltage along alpha that lets the
- * alpha current (the phase's own) die away and stay at zero.
+ * A phase is open: its terminal takes the voltage along its own axis that lets
+ * the current along that axis (the phase's own) die away and stay at zero.
  */
-static inline void open_phase(const struct constants *k, const struct state *x, double c, double s,
-                              struct state *d)
+static inline void open_phase(int phase, const struct constants *k, const struct state *x, double c,
+                              double s, struct state *d)
 {
-	double alpha = x->id * c - x->iq * s, beta = x->id * s + x->iq * c;
-	double rate = d->id * c - d->iq * s - k->p * x->w * beta;
-	double reach = c * c * k->inv_ld + s * s * k->inv_lq;
-	double voltage = (-alpha / OPEN_PHASE_S - rate) / reach;
-	d->id += c * voltage * k->inv_ld;
-	d->iq -= s * voltage * k->inv_lq;
+	static const double AXES[3][2] = {
+	    {1, 0}, {-0.5, 0.86602540378443865}, {-0.5, -0.86602540378443865}};
+	const double *axis = AXES[phase - 1];
+	double along_d = c * axis[0] + s * axis[1], along_q = c * axis[1] - s * axis[0];
+	double current = x->id * along_d + x->iq * along_q;
+	double across = x->iq * along_d - x->id * along_q;
+	double rate = d->id * along_d + d->iq * along_q - k->p * x->w * across;
+	double reach = along_d * along_d * k->inv_ld + along_q * along_q * k->inv_lq;
+	double voltage = (-current / OPEN_PHASE_S - rate) / reach;
+	d->id += along_d * voltage * k->inv_ld;
+	d->iq += along_q * voltage * k->inv_lq;
 }
 
 static inline __attribute__((always_inline)) void electrical(const struct plant *plant,
@@ -108,10 +113,14 @@ static inline __attribute__((always_inline)) void electrical(const struct plant 
 	slope->d.iq =
 	    (mq * x->v - plant->resistance_ohm * x->iq - we * (plant->ld_h * x->id + plant->flux_wb)) *
 	    k->inv_lq;
-	if (plant->blocked)
+	if (plant->blocked) {
 		slope->d.id = slope->d.iq = 0;
-	else if (plant->phase_a_open)
-		open_phase(k, x, c, s, &slope->d);
+	} else if (plant->no_path) {
+		slope->d.id = -x->id / OPEN_PHASE_S;
+		slope->d.iq = -x->iq / OPEN_PHASE_S;
+	} else if (plant->open_phase) {
+		open_phase(plant->open_phase, k, x, c, s, &slope->d);
+	}
 
 	double converter = 1.5 * (md * x->id + mq * x->iq);
 	double supply =

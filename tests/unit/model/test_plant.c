@@ -264,7 +264,7 @@ static void an_open_phase_carries_no_current_and_the_others_are_opposite(void **
 	plant.speed_rad_s = 30;
 	hold_dq(&plant, 2, 14, 0.02);
 	assert_true(fabs(plant.phase_a[0]) > 0.1);
-	plant.phase_a_open = true;
+	plant.open_phase = 1;
 	hold_dq(&plant, 2, 14, 0.005);
 	assert_near(plant.phase_a[0], 0, 1e-3, "A");
 	assert_true(fabs(plant.phase_a[1]) > 0.1);
