@@ -12,6 +12,7 @@
 #include <string.h>
 #include <sys/file.h>
 #include <sys/stat.h>
+#include <time.h>
 #include <unistd.h>
 
 static int open_lock(const char *name, char *path, size_t size)
@@ -33,14 +34,26 @@ static int open_lock(const char *name, char *path, size_t size)
 	return -1;
 }
 
-int lock_take(const char *name, int *ret_fd, struct err *reterr)
+/* flock has no timeout and must not be interrupted by a signal handler's accident: it is asked. */
+static int take(int fd, int64_t wait_ns)
+{
+	const struct timespec pause = {.tv_nsec = 100000000};
+	while (flock(fd, LOCK_EX | LOCK_NB) < 0) {
+		if (wait_ns <= 0)
+			return -1;
+		(void)nanosleep(&pause, NULL);
+		wait_ns -= pause.tv_nsec;
+	}
+	return 0;
+}
+
+int lock_take(const char *name, int64_t wait_ns, int *ret_fd, struct err *reterr)
 {
 	char path[160], holder[96] = "";
 	int fd = open_lock(name, path, sizeof path);
 	if (fd < 0)
-		return err_set(reterr, ERR_OUTPUT, "cannot make the lock of rig %s: %s", name,
-		               strerror(errno));
-	if (flock(fd, LOCK_EX | LOCK_NB) < 0) {
+		return err_set(reterr, ERR_OUTPUT, "cannot make the lock of %s: %s", name, strerror(errno));
+	if (take(fd, wait_ns) < 0) {
 		ssize_t length = pread(fd, holder, sizeof holder - 1, 0);
 		holder[length > 0 ? length : 0] = '\0';
 		holder[strcspn(holder, "\n")] = '\0';
@@ -48,7 +61,8 @@ int lock_take(const char *name, int *ret_fd, struct err *reterr)
 			if (*c < ' ' || *c > '~')
 				*c = '?';
 		(void)close(fd);
-		return err_set(reterr, ERR_BUSY, "rig %s is in use by %s; wait for it to end", name,
+		return err_set(reterr, ERR_BUSY,
+		               "%s is in use by %s; wait for it to end, or queue with --wait", name,
 		               holder[0] ? holder : "another run");
 	}
 	int length = snprintf(holder, sizeof holder, "process %ld\n", (long)getpid());

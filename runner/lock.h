@@ -7,7 +7,13 @@
  */
 #include "err.h"
 
-/* name: of the rig. *ret_fd is closed by the caller (or by death). Errors: ERR_BUSY, ERR_OUTPUT. */
-int lock_take(const char *name, int *ret_fd, struct err *reterr);
+#include <stdint.h>
+
+/*
+ * name: of a rig or an endpoint. Waits up to wait_ns for the holder to end; 0:
+ * not at all. *ret_fd is closed by the caller (or by death). Errors: ERR_BUSY
+ * (names the holder), ERR_OUTPUT.
+ */
+int lock_take(const char *name, int64_t wait_ns, int *ret_fd, struct err *reterr);
 
 #endif

@@ -369,16 +369,12 @@ static int read_identity(struct session *session, const struct rig_device *devic
 	return 0;
 }
 
-static int read_identities(struct session *session, struct err *err)
+/* Reads every identity of the rig into `identities`; *ret_count of them. */
+static int read_identities(struct session *session, struct identity_read *identities,
+                           size_t *ret_count, struct err *err)
 {
 	const struct rig *rig = session->rig;
-	size_t count = 0;
-	for (size_t d = 0; d < rig->device_count; d++)
-		count += rig->devices[d].identity_count;
-	struct identity_read *identities = arena_array(&session->arena, count + 1, sizeof *identities);
-	if (!identities)
-		return err_set(err, ERR_NOMEM, "no memory for the identities");
-	session->facts.identities = identities;
+	*ret_count = 0;
 	for (size_t d = 0; d < rig->device_count; d++) {
 		const struct rig_device *device = &rig->devices[d];
 		for (size_t i = 0; i < device->identity_count; i++) {
@@ -391,11 +387,55 @@ static int read_identities(struct session *session, struct err *err)
 			if (result < 0 || !copy)
 				return err_set(err, ERR_LINK, "cannot read the identity of %s (%s): %s",
 				               device->name, rig->links[device->link].name, cause.message);
-			identities[session->facts.identity_count++] =
+			identities[(*ret_count)++] =
 			    (struct identity_read){device->name, device->identity[i].key, copy};
 		}
 	}
 	return 0;
+}
+
+static struct identity_read *identity_room(struct session *session, struct err *err)
+{
+	size_t count = 1;
+	for (size_t d = 0; d < session->rig->device_count; d++)
+		count += session->rig->devices[d].identity_count;
+	struct identity_read *room = arena_array(&session->arena, count, sizeof *room);
+	if (!room)
+		(void)err_set(err, ERR_NOMEM, "no memory for the identities");
+	return room;
+}
+
+/* Whether every device is still what it was; else a sentence in why. */
+static bool identity_same(struct session *session, char *why, size_t size)
+{
+	struct err err = {0};
+	size_t count;
+	struct identity_read *again = identity_room(session, &err);
+	for (size_t i = 0; i < session->rig->link_count; i++) {
+		session->links[i] = worker_link(conductor_worker(session->conductor, i));
+		if (link_open(session->links[i], &err) < 0)
+			break;
+	}
+	if (err.code == ERR_NONE)
+		(void)read_identities(session, again, &count, &err);
+	memset(session->links, 0, session->rig->link_count * sizeof(struct link *));
+	if (err.code != ERR_NONE) {
+		(void)snprintf(why, size, "the identities could not be read again: %.200s", err.message);
+		return false;
+	}
+	for (size_t i = 0; i < count; i++)
+		if (strcmp(again[i].text, session->facts.identities[i].text) != 0) {
+			(void)snprintf(
+			    why, size, "%s of %s was \"%.60s\" before the run and is \"%.60s\" after it",
+			    again[i].key, again[i].device, session->facts.identities[i].text, again[i].text);
+			return false;
+		}
+	return true;
+}
+
+bool session_identity_same(struct session *session, char *why, size_t size)
+{
+	return session->facts.identity_count == 0 || identity_same(session, why, size);
 }
 
 /* A different identity refuses the run. */
@@ -428,7 +468,7 @@ static int lock_endpoint(struct session *session, const struct link_config *conf
 		(void)snprintf(name, sizeof name, "serial-%.60s", config->serial_path);
 	char clean[101];
 	file_name_clean(name, clean, sizeof clean);
-	return lock_take(clean, &session->locks[session->lock_count++], err);
+	return lock_take(clean, session->options->wait_ns, &session->locks[session->lock_count++], err);
 }
 
 /* The rig by its name, unless --link leads elsewhere, and every endpoint. */
@@ -441,7 +481,8 @@ static int take_locks(struct session *session, struct err *err)
 	if (!session->locks)
 		return err_set(err, ERR_NOMEM, "no memory for the locks");
 	if (session->options->address_count == 0 &&
-	    lock_take(rig->name, &session->locks[session->lock_count++], err) < 0)
+	    lock_take(rig->name, session->options->wait_ns, &session->locks[session->lock_count++],
+	              err) < 0)
 		return -1;
 	for (size_t i = 0; i < rig->link_count; i++) {
 		struct link_config config = rig->links[i].config;
@@ -485,7 +526,9 @@ int session_connect(struct session *session)
 			return session_exit_of(&err);
 		}
 	}
-	if (read_identities(session, &err) < 0)
+	session->facts.identities = identity_room(session, &err);
+	if (!session->facts.identities || read_identities(session, session->facts.identities,
+	                                                  &session->facts.identity_count, &err) < 0)
 		return session_exit_of(&err);
 	if (!identity_fits(session))
 		return print_faults(&session->faults);

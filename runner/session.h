@@ -51,6 +51,7 @@ struct run_options {
 	struct link_address addresses[16];
 	size_t address_count;
 	uint64_t seed;
+	int64_t wait_ns; /* for a rig that is in use */
 	const char *defect;
 	bool quiet, verbose, yes;
 };
@@ -92,6 +93,11 @@ int session_record(struct session *session);
 int session_finish(struct session *session);
 /* The bench is proven once a run, by the first suite: the others lose their bench tests. */
 void session_drop_bench_tests(struct suite *suite);
+/*
+ * After the threads have ended: reads the identities again. False, with a
+ * sentence in why, where one is not what it was before the run.
+ */
+bool session_identity_same(struct session *session, char *why, size_t size);
 /* Judges one bench test from what was recorded so far; for the gates. */
 void session_answer_gate(struct session *session);
 void session_print_error(const struct err *err);

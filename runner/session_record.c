@@ -154,8 +154,14 @@ static int end_journal(struct session *session, struct err *err)
 		if (journal_write(session->journal, &event, err) < 0)
 			result = -1;
 	}
-	event.kind = JOURNAL_RUN_END;
 	event.link = -1;
+	event.time_ns = clock_now(&session->clock);
+	event.kind = JOURNAL_ABORT;
+	if (!stop_raised(&session->stop) &&
+	    !session_identity_same(session, event.text, sizeof event.text) &&
+	    journal_write(session->journal, &event, err) < 0)
+		result = -1;
+	event.kind = JOURNAL_RUN_END;
 	(void)snprintf(event.text, sizeof event.text, "%s", session->facts.realtime);
 	if (journal_write(session->journal, &event, err) < 0)
 		result = -1;

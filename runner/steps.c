@@ -332,6 +332,62 @@ static enum progress silence_tick(struct conductor *conductor, struct walk *walk
 	return PROGRESS_DONE;
 }
 
+static bool may_move(const struct rig *rig, const struct attempt *attempt)
+{
+	for (size_t i = 0; i < rig->attempt_count; i++) {
+		const struct allowed_attempt *allowed = &rig->attempts[i];
+		bool same = attempt->channel >= 0
+		                ? allowed->channel == attempt->channel
+		                : allowed->channel < 0 && allowed->device == attempt->device;
+		if (same && allowed->moving)
+			return true;
+	}
+	return false;
+}
+
+/* The value that the safe state leaves on a command; NaN where it sets none. */
+static double safe_value(const struct rig *rig, int channel)
+{
+	double value = (double)NAN;
+	for (size_t i = 0; i < rig->safe_state_count; i++)
+		for (size_t a = 0; a < rig->safe_state[i].assign_count; a++)
+			if (rig->safe_state[i].assigns[a].channel == channel)
+				value = rig->safe_state[i].assigns[a].value;
+	return value;
+}
+
+/*
+ * At standstill with torque off: the awaits of the safe state hold on what was
+ * read last, and no command stands that the safe state would take back.
+ */
+static bool is_calm(struct conductor *conductor, char *why, size_t size)
+{
+	const struct rig *rig = conductor->rig;
+	char text[128];
+	for (size_t i = 0; i < rig->safe_state_count; i++) {
+		const struct step *step = &rig->safe_state[i];
+		if (step->kind != STEP_AWAIT)
+			continue;
+		struct worker *worker =
+		    conductor->workers[conductor_worker_of(conductor, step->condition.channel)];
+		double value = worker_latest(worker, step->condition.channel);
+		if (!condition_holds(&step->condition, value)) {
+			(void)snprintf(why, size, "%s does not hold (last value %.6g)",
+			               step_text(step, rig, text, sizeof text), value);
+			return false;
+		}
+	}
+	for (size_t c = 0; c < rig->channel_count; c++) {
+		double safe = safe_value(rig, (int)c);
+		if (!isnan(safe) && !isnan(conductor->commanded[c]) && conductor->commanded[c] != safe) {
+			(void)snprintf(why, size, "%s stands at %.6g", rig->infos[c].name,
+			               conductor->commanded[c]);
+			return false;
+		}
+	}
+	return true;
+}
+
 static void attempt_begin(struct conductor *conductor, struct walk *walk, int64_t now_ns)
 {
 	(void)conductor;
@@ -356,6 +412,13 @@ static enum progress attempt_tick(struct conductor *conductor, struct walk *walk
 		if (!attempt_allowed(rig, attempt) || attempt_request(rig, attempt, &request, &err) < 0) {
 			(void)snprintf(walk->why, sizeof walk->why, "attempt %s: %.200s", attempt->name,
 			               err.message[0] ? err.message : "the rig does not allow it");
+			return PROGRESS_FAILED;
+		}
+		char why[160];
+		if (!may_move(rig, attempt) && !is_calm(conductor, why, sizeof why)) {
+			(void)snprintf(walk->why, sizeof walk->why,
+			               "attempt %.64s is allowed at rest only (attempts: moving: no): %.120s",
+			               attempt->name, why);
 			return PROGRESS_FAILED;
 		}
 		conductor->anything_commanded = true;

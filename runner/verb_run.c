@@ -88,6 +88,16 @@ static int take_seed(struct run_options *options, const char *value, struct err 
 	return 0;
 }
 
+static int take_wait(struct run_options *options, const char *value, struct err *reterr)
+{
+	struct quantity quantity;
+	struct err err = {0};
+	if (quantity_parse(value, strlen(value), NULL, &DIM_TIME, &quantity, &err) < 0 ||
+	    quantity_ns(quantity, &options->wait_ns, &err) < 0)
+		return err_set(reterr, ERR_USAGE, "--wait %s: %.600s", value, err.message);
+	return 0;
+}
+
 struct taking {
 	struct run_options *options;
 	bool help;
@@ -114,6 +124,8 @@ static int take(void *context, const struct option_row *row, const char *value, 
 		options->quiet = true;
 	else if (strcmp(name, "help") == 0)
 		taking->help = true;
+	else if (strcmp(name, "wait") == 0)
+		return take_wait(options, value, reterr);
 	else if (strcmp(name, "set") == 0)
 		return take_override(options, value, reterr);
 	else if (strcmp(name, "link") == 0)
