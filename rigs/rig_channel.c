@@ -245,8 +245,8 @@ static int load_channel(struct rig_loader *loader, const struct yaml_pair *pair,
 {
 	channel->at = pair->key->at;
 	channel->device = channel->read_back = -1;
-	channel->least = -INFINITY;
-	channel->most = INFINITY;
+	channel->least = -(double)INFINITY;
+	channel->most = (double)INFINITY;
 	for (size_t i = 0; i < DERIVE_INPUTS_MOST; i++)
 		channel->derivation.inputs[i] = -1;
 	if (is_reserved(channel->info.name))

@@ -86,7 +86,7 @@ void rig_machine_load(struct rig_loader *loader, const struct yaml_node *node)
 			continue;
 		struct nameplate_value *value =
 		    (struct nameplate_value *)(void *)((char *)machine + ROWS[i].offset);
-		*value = (struct nameplate_value){NAN, 0};
+		*value = (struct nameplate_value){(double)NAN, 0};
 		const struct yaml_node *given = yaml_get(node, ROWS[i].key);
 		if (given)
 			load_value(loader, given, &ROWS[i], value);

@@ -141,7 +141,7 @@ static void follow_safe_state(const struct follower *follower)
 	const struct step_context *context = follower->loader->context;
 	const struct rig *rig = context->rig;
 	for (size_t i = 0; i < rig->channel_count; i++)
-		follower->values[i] = NAN;
+		follower->values[i] = (double)NAN;
 	if (context->continues)
 		return;
 	for (size_t i = 0; i < rig->safe_state_count; i++) {

@@ -253,7 +253,8 @@ static void knows_its_conditions(void **state)
 	assert_int_equal(rig->directions[1].prepare[0].assign_count, 2);
 	assert_int_equal(rig->attempts[2].channel, -1);
 	assert_true(rig->attempts[2].any_function);
-	assert_false(rig->attempts[0].moving);
+	assert_true(rig->attempts[0].moving);
+	assert_false(rig->attempts[1].moving);
 }
 
 /* Writes a text to a file of its own and loads it; *ret_path must be freed and unlinked. */
