@@ -73,16 +73,28 @@ static void take_signal(struct session *session, int fd)
 	}
 }
 
+static void stop_signals(sigset_t *set)
+{
+	(void)sigemptyset(set);
+	(void)sigaddset(set, SIGINT);
+	(void)sigaddset(set, SIGTERM);
+	(void)sigaddset(set, SIGHUP);
+}
+
+void engine_hold_signals(void)
+{
+	sigset_t set;
+	stop_signals(&set);
+	(void)signal(SIGPIPE, SIG_IGN);
+	(void)pthread_sigmask(SIG_BLOCK, &set, NULL);
+}
+
 int engine_real(struct session *session)
 {
 	sigset_t set;
 	struct crew crew = {0};
 	struct progress_line line;
-	(void)sigemptyset(&set);
-	(void)sigaddset(&set, SIGINT);
-	(void)sigaddset(&set, SIGTERM);
-	(void)sigaddset(&set, SIGHUP);
-	(void)signal(SIGPIPE, SIG_IGN);
+	stop_signals(&set);
 	(void)prctl(PR_SET_TIMERSLACK, 1UL);
 	int fd = -1;
 	if (pthread_sigmask(SIG_BLOCK, &set, NULL) != 0 ||

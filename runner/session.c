@@ -60,7 +60,7 @@ void session_release(struct session *session)
 
 /* ---- files ---------------------------------------------------------------- */
 
-static int print_faults(const struct faults *faults)
+int session_print_faults(const struct faults *faults)
 {
 	struct text text;
 	text_init(&text, 0);
@@ -155,7 +155,7 @@ static int check_attendance(struct session *session)
 		return 0;
 	if (session->rig->unattended) {
 		if (!rig_unattended_ready(session->rig, &session->faults))
-			return print_faults(&session->faults);
+			return session_print_faults(&session->faults);
 		return 0;
 	}
 	if (!isatty(STDIN_FILENO) || !isatty(STDERR_FILENO)) {
@@ -193,7 +193,7 @@ int session_load(struct session *session)
 	if (load_files(session, &err) < 0)
 		return session_exit_of(&err);
 	if (has_faults(session))
-		return print_faults(&session->faults);
+		return session_print_faults(&session->faults);
 	if (select_tests(session, &err) < 0)
 		return session_exit_of(&err);
 	show_cautions(session);
@@ -502,7 +502,7 @@ int session_reach(struct session *session)
 	if (session->options->rehearse && make_served(session, &err) < 0)
 		return session_exit_of(&err);
 	if (has_faults(session))
-		return print_faults(&session->faults);
+		return session_print_faults(&session->faults);
 	session->links = arena_array(&session->arena, rig->link_count, sizeof(struct link *));
 	if (!session->links)
 		return EXIT_INTERNAL;
@@ -531,7 +531,7 @@ int session_connect(struct session *session)
 	                                                  &session->facts.identity_count, &err) < 0)
 		return session_exit_of(&err);
 	if (!identity_fits(session))
-		return print_faults(&session->faults);
+		return session_print_faults(&session->faults);
 	struct conductor_config config = {.rig = rig,
 	                                  .suites = session->suites,
 	                                  .suite_count = session->suite_count,

@@ -101,10 +101,17 @@ bool session_identity_same(struct session *session, char *why, size_t size);
 /* Judges one bench test from what was recorded so far; for the gates. */
 void session_answer_gate(struct session *session);
 void session_print_error(const struct err *err);
+/* Prints them and gives the exit code that belongs to wrong files. */
+int session_print_faults(const struct faults *faults);
 /* Prints it and gives the exit code that belongs to it. */
 int session_exit_of(const struct err *err);
 
-/* engine_*.c: drive the conductor until the run has ended. */
+/*
+ * engine_*.c: drive the conductor until the run has ended. From
+ * engine_hold_signals() on, signals wait for engine_real(): a run folder that
+ * was begun is then always ended in order.
+ */
+void engine_hold_signals(void);
 int engine_real(struct session *session);
 int engine_virtual(struct session *session);
 

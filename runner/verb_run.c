@@ -192,8 +192,11 @@ static int carry_out(const struct run_options *options)
 	int code = session_load(session);
 	if (code == 0)
 		code = session_connect(session);
-	if (code == 0)
+	if (code == 0) {
+		if (!options->rehearse)
+			engine_hold_signals();
 		code = session_record(session);
+	}
 	if (code == 0) {
 		code = options->rehearse ? engine_virtual(session) : engine_real(session);
 		if (code == 0)
