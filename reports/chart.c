@@ -104,7 +104,9 @@ static void widen(int64_t *t0, int64_t *t1, int64_t earliest, int64_t latest)
 		*t1 = latest;
 }
 
-/* The whole stimulus; where all that matters is a small part of it, that part and its surroundings.
+/*
+ * The whole stimulus; where the times that were measured lie in a small part
+ * of it, that part and its surroundings.
  */
 static void find_times(struct chart *chart)
 {
@@ -115,18 +117,23 @@ static void find_times(struct chart *chart)
 	const struct mark *mark = mark_of_field(chart);
 	if (mark)
 		widen(&t0, &t1, mark->earliest_ns, mark->latest_ns);
+	bool timed = false;
 	for (size_t m = 0; m < chart->check->metric_count; m++) {
 		const struct metric *metric = &chart->check->metrics[m].metric;
+		if (metric->kind->shape != METRIC_TIME)
+			continue;
 		for (size_t p = 0; p < metric->point_count; p++)
-			if (is_placed(&metric->points[p]))
+			if (is_placed(&metric->points[p])) {
+				timed = true;
 				widen(&t0, &t1, metric->points[p].earliest_ns, metric->points[p].latest_ns);
+			}
 	}
 	chart->t0_ns = begin;
 	chart->t1_ns = end;
-	if (t0 >= begin && t1 <= end && t1 > t0 && (t1 - t0) < (end - begin) / 5) {
+	if (timed && t0 >= begin && t1 <= end && t1 > t0 && t1 - t0 < (end - begin) / 8) {
 		int64_t span = t1 - t0;
 		chart->t0_ns = t0 - span > begin ? t0 - span : begin;
-		chart->t1_ns = t1 + span < end ? t1 + span : end;
+		chart->t1_ns = t1 + 3 * span < end ? t1 + 3 * span : end;
 	}
 	bool short_time = chart->t1_ns - begin < 2 * NS_PER_S;
 	chart->t_factor = short_time ? 1e-6 : 1e-9;
@@ -370,7 +377,7 @@ static void mark_bands(const struct chart *chart, const struct chart_scale *scal
 		double x1 = fmax(chart_x(scale, (double)mark->earliest_ns), scale->x0);
 		double x2 = fmin(chart_x(scale, (double)mark->latest_ns), scale->x1);
 		rectangle(chart->out, x1, scale->y_high, fmax(x2 - x1, 1), scale->y_low - scale->y_high,
-		          "#6b6658", "0.45");
+		          "#6b6658", x2 - x1 < 3 ? "0.6" : "0.2");
 		if (named)
 			label(chart->out, x1 + 3, scale->y_high + 11 + 12.0 * (row++ % LABELS_ROWS), "start",
 			      "#5a5547", mark->name);
@@ -397,7 +404,7 @@ static void bad_bands(const struct chart *chart, const struct chart_scale *scale
 static void metric_points(const struct chart *chart, const struct chart_scale *scale)
 {
 	char number[16];
-	int count = 0;
+	int count = 0, base = 0;
 	for (size_t m = 0; m < chart->check->metric_count; m++) {
 		const struct metric *metric = &chart->check->metrics[m].metric;
 		for (size_t p = 0; p < metric->point_count && count < POINTS_MOST; p++) {
@@ -409,10 +416,15 @@ static void metric_points(const struct chart *chart, const struct chart_scale *s
 			               point->level <= scale->high;
 			double x1 = fmax(chart_x(scale, (double)point->earliest_ns), scale->x0);
 			double x2 = fmin(chart_x(scale, (double)point->latest_ns), scale->x1);
-			double y = on_axis ? chart_y(scale, point->level) : scale->y_low - 3;
-			rectangle(chart->out, x1 - 1.5, y - 2.5, fmax(x2 - x1, 0) + 3, 5, "#111111", "0.75");
+			/* Those without a level stand on the axis of time, one above the other. */
+			double y = on_axis ? chart_y(scale, point->level) : scale->y_low - 4 - 10.0 * base++;
+			rectangle(chart->out, x1 - 1.5, y - 2, fmax(x2 - x1, 0) + 3, 4, "#111111", "0.75");
 			(void)snprintf(number, sizeof number, "%d", ++count);
-			label(chart->out, (x1 + x2) / 2, y - 6, "middle", "#111111", number);
+			if (on_axis)
+				label(chart->out, (x1 + x2) / 2, count % 2 ? y - 5 : y + 13, "middle", "#111111",
+				      number);
+			else
+				label(chart->out, x2 + 5, y + 4, "start", "#111111", number);
 		}
 	}
 }
@@ -463,6 +475,12 @@ static void caption(const struct chart *chart)
 	xml_open(chart->out, "figcaption");
 	xml_textf(chart->out, "%.64s. Grey: marks with their interval. Dotted: limits.",
 	          chart->check->use->name);
+	if (chart->t0_ns > chart->test->recorded->begin_ns ||
+	    chart->t1_ns < chart->test->recorded->end_ns)
+		xml_textf(chart->out, " A part of the stimulus, which took %.4g %s.",
+		          (double)(chart->test->recorded->end_ns - chart->test->recorded->begin_ns) *
+		              chart->t_factor,
+		          chart->t_unit);
 	for (size_t m = 0; m < chart->check->metric_count; m++) {
 		const struct metric *metric = &chart->check->metrics[m].metric;
 		for (size_t p = 0; p < metric->point_count && count < POINTS_MOST; p++) {
@@ -470,8 +488,9 @@ static void caption(const struct chart *chart)
 			if (!is_placed(point) || point->latest_ns < chart->t0_ns ||
 			    point->earliest_ns > chart->t1_ns)
 				continue;
-			xml_textf(chart->out, " %d: %s%s%s.", ++count, metric->kind->name,
-			          point->label && *point->label ? ", " : "", point->label ? point->label : "");
+			bool own = point->label && *point->label && strcmp(point->label, metric->kind->name);
+			xml_textf(chart->out, " %d: %s%s%s.", ++count, metric->kind->name, own ? ", " : "",
+			          own ? point->label : "");
 		}
 	}
 	xml_close(chart->out);

@@ -105,6 +105,8 @@ void chart_curve(struct xml_out *out, const struct series *series, const struct 
 	struct pen pen = {.out = out, .stroke = "#1f4e6b"};
 	struct column column = {0};
 	double wraps = series->channel->wraps, last_value = NAN;
+	/* A code does not pass through the codes between: it holds until the next sample. */
+	bool stepped = series->channel->name_count > 0;
 	int64_t last_ns = 0;
 	text_init(&pen.points, 0);
 	for (size_t row = series_first_at(series, scale->t0_ns); row < series->rows; row++) {
@@ -124,6 +126,10 @@ void chart_curve(struct xml_out *out, const struct series *series, const struct 
 			column_out(&pen, &column);
 		if (!joined)
 			pen_lift(&pen);
+		if (joined && stepped && value != last_value) {
+			column_out(&pen, &column);
+			pen_to(&pen, chart_x(scale, (double)t), chart_y(scale, last_value));
+		}
 		last_value = value;
 		last_ns = t;
 		if (!isfinite(value))

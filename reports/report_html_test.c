@@ -266,7 +266,8 @@ static void metric_table(struct xml_out *out, const struct check_result *check)
 	xml_open(out, "tbody");
 	for (size_t i = 0; i < check->metric_count; i++) {
 		const struct metric_result *metric = &check->metrics[i];
-		if (metric->limit_count == 0)
+		/* What nobody asked for and nobody knows is in results.json only. */
+		if (metric->limit_count == 0 && !isnan(metric->metric.value))
 			metric_row(out, &metric->metric, NULL);
 		for (size_t l = 0; l < metric->limit_count; l++)
 			metric_row(out, &metric->metric, &metric->limits[l]);
