@@ -125,7 +125,8 @@ static void stays_off(struct work *work, const struct rows *rows, const struct l
 		}
 		doubt = true;
 	}
-	if (doubt || rows_have_gap(work->in, rows, why, sizeof why))
+	if (doubt || rows_gap_within(work->in, rows, latency->after, rows->count, work->in->end_ns, why,
+	                             sizeof why))
 		unknown(work, STAYS_OFF, why);
 	else
 		put_yes_no(&work->metrics[STAYS_OFF], &metrics[STAYS_OFF], channel->evidence, true, "");

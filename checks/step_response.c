@@ -474,22 +474,11 @@ static void settled_part(struct work *work)
 	          0.95);
 }
 
-/* Longest time between neighbours of [begin, end) beyond the limit; then work->why says so. */
+/* Whether samples are missing in [begin, end); then work->why says so. */
 static bool gap_in(struct work *work, size_t begin, size_t end)
 {
-	const struct rows *rows = &work->rows;
-	int64_t limit = rows_gap_limit(work->in, rows);
-	for (size_t i = begin + 1; i < end; i++) {
-		int64_t before = series_received(&rows->series, rows->first + i - 1);
-		int64_t gap = series_received(&rows->series, rows->first + i) - before;
-		if (gap > limit) {
-			(void)snprintf(work->why, sizeof work->why,
-			               "no sample of %s for %.3f ms after %.3f ms, where the answer lies",
-			               work->channel->name, (double)gap / 1e6, (double)before / 1e6);
-			return true;
-		}
-	}
-	return false;
+	return rows_gap_within(work->in, &work->rows, begin, end, INT64_MIN, work->why,
+	                       sizeof work->why);
 }
 
 static void shape(struct work *work)

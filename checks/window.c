@@ -226,14 +226,38 @@ int64_t rows_gap_limit(const struct check_input *in, const struct rows *rows)
 	return 5 * interval;
 }
 
-bool rows_have_gap(const struct check_input *in, const struct rows *rows, char *why, size_t size)
+static bool say_gap(const struct check_input *in, const struct rows *rows, int64_t gap_ns,
+                    int64_t at_ns, char *why, size_t size)
 {
 	int64_t limit = rows_gap_limit(in, rows);
-	if (rows->gap_ns <= limit)
+	if (gap_ns <= limit)
 		return false;
-	(void)snprintf(why, size, "no sample of %s for %.3f ms after %.3f ms (%.3f ms would do)",
-	               rows->series.channel->name, ms(rows->gap_ns), ms(rows->gap_at_ns), ms(limit));
+	(void)snprintf(
+	    why, size,
+	    "no sample of %s for %.3f ms after %.3f ms, where the answer lies (%.3f ms would do)",
+	    rows->series.channel->name, ms(gap_ns), ms(at_ns), ms(limit));
 	return true;
+}
+
+bool rows_have_gap(const struct check_input *in, const struct rows *rows, char *why, size_t size)
+{
+	return say_gap(in, rows, rows->gap_ns, rows->gap_at_ns, why, size);
+}
+
+bool rows_gap_within(const struct check_input *in, const struct rows *rows, size_t begin,
+                     size_t end, int64_t to_ns, char *why, size_t size)
+{
+	int64_t longest = 0, at = 0;
+	for (size_t i = begin; i < end; i++) {
+		int64_t before = series_received(&rows->series, rows->first + i);
+		int64_t next = i + 1 < end ? series_received(&rows->series, rows->first + i + 1)
+		                           : (to_ns > before ? to_ns : before);
+		if (next - before > longest) {
+			longest = next - before;
+			at = before;
+		}
+	}
+	return say_gap(in, rows, longest, at, why, size);
 }
 
 struct stretch rows_stretch(const struct rows *rows, size_t begin, size_t end, int64_t origin_ns)

@@ -44,6 +44,13 @@ int64_t rows_gap_limit(const struct check_input *in, const struct rows *rows);
 /* Whether the rows have a gap beyond that; then why[size] says so. */
 bool rows_have_gap(const struct check_input *in, const struct rows *rows, char *why, size_t size);
 
+/*
+ * The same between the rows [begin, end), and from the last of them to to_ns
+ * where that is later.
+ */
+bool rows_gap_within(const struct check_input *in, const struct rows *rows, size_t begin,
+                     size_t end, int64_t to_ns, char *why, size_t size);
+
 /* Stretch over rows [begin, end) of the taken ones, with times from origin_ns. */
 struct stretch rows_stretch(const struct rows *rows, size_t begin, size_t end, int64_t origin_ns);
 /* Largest limit of error in [begin, end). */
