@@ -16,8 +16,8 @@
 
 #include "loading.h"
 
-#define EVERY_NS          (5 * NS_PER_MS)
-#define TRIPPED_HOLD_NS   (200 * NS_PER_MS) /* the trip is looked at for so long */
+#define EVERY_NS          (10 * NS_PER_MS)
+#define TRIPPED_HOLD_NS   (300 * NS_PER_MS) /* the trip is looked at for so long */
 #define CLEARED_NS        (2 * NS_PER_S)    /* a cleared watchdog shows within it */
 #define DIRECTION_HOLD_NS (900 * NS_PER_MS)
 
@@ -209,9 +209,9 @@ static int watchdog_test(struct bench *b, int device)
 	                 arena_printf(b->arena,
 	                              "- stays_within:\n"
 	                              "    channel: %s\n"
-	                              "    window: {from: tripped, for: 150 ms}\n"
+	                              "    window: {from: tripped, for: 250 ms}\n"
 	                              "    %s\n"
-	                              "    ignore_shorter_than: 50 ms\n"
+	                              "    ignore_shorter_than: 120 ms\n"
 	                              "    limits: {inside: {is: yes}}\n",
 	                              b->rig->infos[dog->tripped.channel].name, bounds ? bounds : ""));
 }
