@@ -12,8 +12,8 @@
  *   - attempt: {name: N, write: {C: V}, expect: illegal_data_value}
  *   - attempt: {name: N, device: D, read_input_register: A, count: N, expect: illegal_data_address}
  *   - attempt: {name: N, device: D, function: F, expect: illegal_function}
- *   - cycle: {times: N, steps: [...]}
  *     expect: the name of a Modbus exception (Application Protocol V1.1b3, section 7), or any
+ *   - cycle: {times: N, steps: [...]}
  *   - mark: {name: M, when: {channel: ..., above: ...}}   (no step of its own: watches)
  * Every step may carry `mark: NAME`. On a set it is the instant of the command
  * ([request sent + earliest effect, reply received + latest effect], over all
