@@ -220,6 +220,14 @@ static bool load_request(struct step_loader *loader, const struct yaml_node *val
 int step_attempt_load(struct step_loader *loader, const struct yaml_node *value, struct step *ret)
 {
 	struct fields fields = {.count = 1};
+	if (loader->passes > 1) {
+		/* A check judges one outcome: a second one that is accepted must not hide behind it. */
+		faults_add(loader->context->faults, ret->at,
+		           "this attempt would be made %d times: attempts cannot stand in a cycle; "
+		           "`repeat` of the test makes it once in each",
+		           loader->passes);
+		return 0;
+	}
 	if (!bind_mapping(&loader->binder, &STEP_ATTEMPT_FIELDS, value, &fields))
 		return 0;
 	struct attempt *attempt = &ret->attempt;
