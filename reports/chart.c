@@ -14,25 +14,8 @@
 
 #include "report_text.h"
 
-enum { PANELS_MOST = 3, POINTS_MOST = 12, TICKS_MOST = 12, LABELS_ROWS = 2 };
-
-static const double WIDTH = 760, LEFT = 96, RIGHT = 22, TOP = 40, HEIGHT = 150, GAP = 30,
-                    BOTTOM = 26;
-
-struct chart {
-	struct xml_out *out;
-	const struct rig *rig;
-	const struct test_result *test;
-	const struct check_result *check;
-	const char *id;
-	int columns;
-	int channels[PANELS_MOST];
-	size_t panel_count;
-	bool primary; /* the first channel is the field "channel": points' levels are on its axis */
-	int64_t t0_ns, t1_ns;
-	double t_factor; /* from ns to what the axis shows */
-	const char *t_unit;
-};
+/* In the units of the viewBox. */
+static const double TOP = 40, HEIGHT = 150, GAP = 30, BOTTOM = 26;
 
 /* ---- what there is to draw ------------------------------------------------ */
 
@@ -175,111 +158,6 @@ static bool is_time_from(const struct mark *mark, const struct metric *metric)
 
 /* ---- drawing -------------------------------------------------------------- */
 
-static void line(struct xml_out *out, double x1, double y1, double x2, double y2,
-                 const char *stroke, const char *dash)
-{
-	xml_open(out, "line");
-	xml_attrf(out, "x1", "%.1f", x1);
-	xml_attrf(out, "y1", "%.1f", y1);
-	xml_attrf(out, "x2", "%.1f", x2);
-	xml_attrf(out, "y2", "%.1f", y2);
-	xml_attr(out, "stroke", stroke);
-	if (dash)
-		xml_attr(out, "stroke-dasharray", dash);
-	xml_close_void(out);
-}
-
-static void rectangle(struct xml_out *out, double x, double y, double width, double height,
-                      const char *fill, const char *opacity)
-{
-	xml_open(out, "rect");
-	xml_attrf(out, "x", "%.1f", x);
-	xml_attrf(out, "y", "%.1f", y);
-	xml_attrf(out, "width", "%.1f", width);
-	xml_attrf(out, "height", "%.1f", height);
-	xml_attr(out, "fill", fill);
-	if (opacity)
-		xml_attr(out, "fill-opacity", opacity);
-	xml_close_void(out);
-}
-
-static void label(struct xml_out *out, double x, double y, const char *anchor, const char *fill,
-                  const char *text)
-{
-	xml_open(out, "text");
-	xml_attrf(out, "x", "%.1f", x);
-	xml_attrf(out, "y", "%.1f", y);
-	xml_attr(out, "text-anchor", anchor);
-	xml_attr(out, "fill", fill);
-	xml_text(out, text);
-	xml_close(out);
-}
-
-/* 1, 2 or 5 times a power of ten, so that at most `most` ticks fit into the span. */
-static double tick_step(double span, int most)
-{
-	double raw = span / most, power = pow(10, floor(log10(raw)));
-	double share = raw / power;
-	return power * (share <= 1 ? 1 : share <= 2 ? 2 : share <= 5 ? 5 : 10);
-}
-
-static void tick_text(double value, double step, char *buffer, size_t size)
-{
-	double decimals = fmin(fmax(-floor(log10(step) + 1e-9), 0), 9);
-	(void)snprintf(buffer, size, "%.*f", (int)decimals, fabs(value) < step * 1e-6 ? 0.0 : value);
-}
-
-static void y_axis(const struct chart *chart, const struct chart_scale *scale,
-                   const struct channel_info *info)
-{
-	char text[80];
-	if (info->name_count) {
-		for (size_t i = 0; i < info->name_count && i < 24; i++) {
-			double value = info->named_values[i];
-			if (value < scale->low || value > scale->high)
-				continue;
-			line(chart->out, scale->x0, chart_y(scale, value), scale->x1, chart_y(scale, value),
-			     "#ddd8ca", NULL);
-			(void)snprintf(text, sizeof text, "%.15s", info->value_names[i]);
-			label(chart->out, scale->x0 - 6, chart_y(scale, value) + 4, "end", "#3a3833", text);
-		}
-		return;
-	}
-	double step = tick_step(scale->high - scale->low, 5);
-	double first = ceil(scale->low / step);
-	for (int i = 0; i < TICKS_MOST; i++) {
-		double value = (first + i) * step;
-		if (value > scale->high)
-			break;
-		double y = chart_y(scale, value);
-		line(chart->out, scale->x0, y, scale->x1, y, "#ddd8ca", NULL);
-		tick_text(value, step, text, sizeof text);
-		label(chart->out, scale->x0 - 6, y + 4, "end", "#3a3833", text);
-	}
-}
-
-static void x_axis(const struct chart *chart, double bottom)
-{
-	char text[80];
-	struct chart_scale scale = {
-	    .t0_ns = chart->t0_ns, .t1_ns = chart->t1_ns, .x0 = LEFT, .x1 = WIDTH - RIGHT};
-	double begin = (double)chart->test->recorded->begin_ns;
-	double low = ((double)chart->t0_ns - begin) * chart->t_factor;
-	double high = ((double)chart->t1_ns - begin) * chart->t_factor;
-	double step = tick_step(high - low, 8), first = ceil(low / step);
-	for (int i = 0; i < TICKS_MOST; i++) {
-		double value = (first + i) * step;
-		if (value > high)
-			break;
-		double x = chart_x(&scale, value / chart->t_factor + begin);
-		line(chart->out, x, bottom, x, bottom + 4, "#3a3833", NULL);
-		tick_text(value, step, text, sizeof text);
-		label(chart->out, x, bottom + 16, "middle", "#3a3833", text);
-	}
-	(void)snprintf(text, sizeof text, "time since the stimulus began, %s", chart->t_unit);
-	label(chart->out, (LEFT + WIDTH - RIGHT) / 2, bottom + 32, "middle", "#3a3833", text);
-}
-
 static bool same_quantity(const struct channel_info *command, const struct channel_info *panel)
 {
 	return panel->unit != unit_one() && panel->name_count == 0 &&
@@ -350,17 +228,17 @@ static void limit_lines(const struct chart *chart, const struct chart_scale *sca
 				               i == 0 ? "at least" : "at most");
 				if (level) {
 					double y = chart_y(scale, values[i]);
-					line(chart->out, scale->x0, y, scale->x1, y, "#9b2335", "2 3");
-					label(chart->out, scale->x1 - 4, i == 0 ? y + 11 : y - 4, "end", "#9b2335",
-					      text);
+					chart_line(chart->out, scale->x0, y, scale->x1, y, "#9b2335", "2 3");
+					chart_label(chart->out, scale->x1 - 4, i == 0 ? y + 11 : y - 4, "end",
+					            "#9b2335", text);
 					continue;
 				}
 				double x = chart_x(scale, (double)mark->latest_ns + values[i] * 1e9);
 				if (x < scale->x0 || x > scale->x1)
 					continue;
-				line(chart->out, x, scale->y_high, x, scale->y_low, "#9b2335", "2 3");
-				label(chart->out, x + 3, scale->y_low - 4 - 12.0 * (double)(m % 4), "start",
-				      "#9b2335", text);
+				chart_line(chart->out, x, scale->y_high, x, scale->y_low, "#9b2335", "2 3");
+				chart_label(chart->out, x + 3, scale->y_low - 4 - 12.0 * (double)(m % 4), "start",
+				            "#9b2335", text);
 			}
 		}
 	}
@@ -376,11 +254,11 @@ static void mark_bands(const struct chart *chart, const struct chart_scale *scal
 			continue;
 		double x1 = fmax(chart_x(scale, (double)mark->earliest_ns), scale->x0);
 		double x2 = fmin(chart_x(scale, (double)mark->latest_ns), scale->x1);
-		rectangle(chart->out, x1, scale->y_high, fmax(x2 - x1, 1), scale->y_low - scale->y_high,
-		          "#6b6658", x2 - x1 < 3 ? "0.6" : "0.2");
+		chart_rectangle(chart->out, x1, scale->y_high, fmax(x2 - x1, 1),
+		                scale->y_low - scale->y_high, "#6b6658", x2 - x1 < 3 ? "0.6" : "0.2");
 		if (named)
-			label(chart->out, x1 + 3, scale->y_high + 11 + 12.0 * (row++ % LABELS_ROWS), "start",
-			      "#5a5547", mark->name);
+			chart_label(chart->out, x1 + 3, scale->y_high + 11 + 12.0 * (row++ % LABELS_ROWS),
+			            "start", "#5a5547", mark->name);
 	}
 }
 
@@ -395,8 +273,8 @@ static void bad_bands(const struct chart *chart, const struct chart_scale *scale
 		x1 = fmax(x1, scale->x0);
 		x2 = fmin(x2, scale->x1);
 		if (x2 > x1)
-			rectangle(chart->out, x1, scale->y_high, x2 - x1, scale->y_low - scale->y_high,
-			          "#9b2335", "0.15");
+			chart_rectangle(chart->out, x1, scale->y_high, x2 - x1, scale->y_low - scale->y_high,
+			                "#9b2335", "0.15");
 	}
 }
 
@@ -418,13 +296,14 @@ static void metric_points(const struct chart *chart, const struct chart_scale *s
 			double x2 = fmin(chart_x(scale, (double)point->latest_ns), scale->x1);
 			/* Those without a level stand on the axis of time, one above the other. */
 			double y = on_axis ? chart_y(scale, point->level) : scale->y_low - 4 - 10.0 * base++;
-			rectangle(chart->out, x1 - 1.5, y - 2, fmax(x2 - x1, 0) + 3, 4, "#111111", "0.75");
+			chart_rectangle(chart->out, x1 - 1.5, y - 2, fmax(x2 - x1, 0) + 3, 4, "#111111",
+			                "0.75");
 			(void)snprintf(number, sizeof number, "%d", ++count);
 			if (on_axis)
-				label(chart->out, (x1 + x2) / 2, count % 2 ? y - 5 : y + 13, "middle", "#111111",
-				      number);
+				chart_label(chart->out, (x1 + x2) / 2, count % 2 ? y - 5 : y + 13, "middle",
+				            "#111111", number);
 			else
-				label(chart->out, x2 + 5, y + 4, "start", "#111111", number);
+				chart_label(chart->out, x2 + 5, y + 4, "start", "#111111", number);
 		}
 	}
 }
@@ -437,15 +316,15 @@ static void panel(const struct chart *chart, size_t index, double top)
 	const struct test *test = chart->test->test;
 	struct chart_scale scale = {.t0_ns = chart->t0_ns,
 	                            .t1_ns = chart->t1_ns,
-	                            .x0 = LEFT,
-	                            .x1 = WIDTH - RIGHT,
+	                            .x0 = CHART_LEFT,
+	                            .x1 = CHART_WIDTH - CHART_RIGHT,
 	                            .y_low = top + HEIGHT,
 	                            .y_high = top};
 	char text[320];
 	int64_t every = test->group_count ? test->groups[0].every_ns : 0;
 	value_range(chart, index, &scale.low, &scale.high);
 	bad_bands(chart, &scale, series);
-	y_axis(chart, &scale, info);
+	chart_y_axis(chart, &scale, info);
 	mark_bands(chart, &scale, index == 0);
 	if (index == 0)
 		limit_lines(chart, &scale);
@@ -460,13 +339,13 @@ static void panel(const struct chart *chart, size_t index, double top)
 	chart_curve(chart->out, series, &scale, chart->columns, 5 * every);
 	if (index == 0)
 		metric_points(chart, &scale);
-	line(chart->out, scale.x0, scale.y_low, scale.x1, scale.y_low, "#3a3833", NULL);
-	line(chart->out, scale.x0, scale.y_low, scale.x0, scale.y_high, "#3a3833", NULL);
+	chart_line(chart->out, scale.x0, scale.y_low, scale.x1, scale.y_low, "#3a3833", NULL);
+	chart_line(chart->out, scale.x0, scale.y_low, scale.x0, scale.y_high, "#3a3833", NULL);
 	(void)snprintf(text, sizeof text, "%.64s%s%.40s (%s)%s", info->name,
 	               info->unit == unit_one() ? "" : ", ",
 	               info->unit == unit_one() ? "" : info->unit->name, evidence_name(info->evidence),
 	               commanded ? "; dashed: what was commanded" : "");
-	label(chart->out, scale.x0, top - 7, "start", "#1f4e6b", text);
+	chart_label(chart->out, scale.x0, top - 7, "start", "#1f4e6b", text);
 }
 
 static void caption(const struct chart *chart)
@@ -524,8 +403,8 @@ void chart_write(struct xml_out *out, const struct rig *rig, const struct test_r
 	xml_attr(out, "xmlns", "http://www.w3.org/2000/svg");
 	xml_attr(out, "role", "img");
 	xml_attrf(out, "aria-labelledby", "%s-title", id);
-	xml_attrf(out, "viewBox", "0 0 %.0f %.0f", WIDTH, bottom + BOTTOM);
-	xml_attrf(out, "width", "%.0f", WIDTH);
+	xml_attrf(out, "viewBox", "0 0 %.0f %.0f", CHART_WIDTH, bottom + BOTTOM);
+	xml_attrf(out, "width", "%.0f", CHART_WIDTH);
 	xml_attrf(out, "height", "%.0f", bottom + BOTTOM);
 	xml_attr(out, "font-family", "system-ui, sans-serif");
 	xml_attr(out, "font-size", "11");
@@ -534,10 +413,10 @@ void chart_write(struct xml_out *out, const struct rig *rig, const struct test_r
 	xml_textf(out, "%s of test %s: %s over time", check->use->name, test->test->name,
 	          rig->infos[chart.channels[0]].name);
 	xml_close(out);
-	rectangle(out, 0, 0, WIDTH, bottom + BOTTOM, "#fbfaf5", NULL);
+	chart_rectangle(out, 0, 0, CHART_WIDTH, bottom + BOTTOM, "#fbfaf5", NULL);
 	for (size_t i = 0; i < chart.panel_count; i++)
 		panel(&chart, i, TOP - 14 + (HEIGHT + GAP) * (double)i);
-	x_axis(&chart, bottom - 14);
+	chart_x_axis(&chart, bottom - 14);
 	xml_close(out);
 	caption(&chart);
 	xml_close(out);

@@ -22,7 +22,29 @@ bool chart_possible(const struct rig *rig, const struct test_result *test,
 void chart_write(struct xml_out *out, const struct rig *rig, const struct test_result *test,
                  const struct check_result *check, const char *id, int columns);
 
-/* ---- chart_curve.c: one polyline after another ---------------------------- */
+/* ---- shared by chart.c and chart_axes.c ------------------------------------- */
+
+enum { PANELS_MOST = 3, POINTS_MOST = 12, TICKS_MOST = 12, LABELS_ROWS = 2 };
+
+/* Sizes in the units of the viewBox. */
+#define CHART_WIDTH 760.0
+#define CHART_LEFT  96.0
+#define CHART_RIGHT 22.0
+
+struct chart {
+	struct xml_out *out;
+	const struct rig *rig;
+	const struct test_result *test;
+	const struct check_result *check;
+	const char *id;
+	int columns;
+	int channels[PANELS_MOST];
+	size_t panel_count;
+	bool primary; /* the first channel is the field "channel": points' levels are on its axis */
+	int64_t t0_ns, t1_ns;
+	double t_factor; /* from ns to what the axis shows */
+	const char *t_unit;
+};
 
 struct chart_scale {
 	int64_t t0_ns, t1_ns;
@@ -42,6 +64,20 @@ static inline double chart_y(const struct chart_scale *scale, double value)
 	return scale->y_low +
 	       (value - scale->low) * (scale->y_high - scale->y_low) / (scale->high - scale->low);
 }
+
+/* ---- chart_axes.c: primitives and axes ---------------------------------------- */
+
+void chart_line(struct xml_out *out, double x1, double y1, double x2, double y2, const char *stroke,
+                const char *dash);
+void chart_rectangle(struct xml_out *out, double x, double y, double width, double height,
+                     const char *fill, const char *opacity);
+void chart_label(struct xml_out *out, double x, double y, const char *anchor, const char *fill,
+                 const char *text);
+void chart_y_axis(const struct chart *chart, const struct chart_scale *scale,
+                  const struct channel_info *info);
+void chart_x_axis(const struct chart *chart, double bottom);
+
+/* ---- chart_curve.c: one polyline after another ---------------------------- */
 
 /* gap_ns: neighbours further apart are not joined; 0: all are. */
 void chart_curve(struct xml_out *out, const struct series *series, const struct chart_scale *scale,

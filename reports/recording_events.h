@@ -31,6 +31,7 @@ struct reading {
 	size_t map_room;                 /* of recording->maps */
 	const char **files;              /* samples files taken so far, one a map */
 	int64_t last_ns;
+	void *grown; /* by GROW */
 	bool run_ended;
 };
 
@@ -43,5 +44,51 @@ int reading_begin(struct reading *reading, const json_t *line, struct err *reter
 int reading_event(struct reading *reading, const json_t *line, struct err *reterr);
 /* After the last line: what was not told is told as such. */
 int reading_end(struct reading *reading, struct err *reterr);
+
+struct event {
+	const json_t *line;
+	enum journal_kind kind;
+	int64_t time_ns;
+	/* Of the test that it names, where the suites have it. */
+	const struct suite *suite;
+	const struct test *test;
+	struct recorded_test *recorded; /* NULL before its test_begin */
+	struct test_state *state;
+};
+
+/* ---- what the two files that read events share ------------------------------ */
+
+int reading_no_memory(struct err *reterr); /* ERR_NOMEM; -1 */
+/* Members of a line; NULL, `otherwise`, NaN, false where they are missing or of another kind. */
+const char *reading_text(const json_t *line, const char *key);
+int64_t reading_integer(const json_t *line, const char *key, int64_t otherwise);
+double reading_number(const json_t *line, const char *key);
+bool reading_interval(const json_t *line, int64_t *ret_earliest, int64_t *ret_latest);
+/* Cuts at the end of the buffer; text may be NULL. */
+void reading_copy(char *buffer, size_t size, const char *text);
+/* The array with room for one more item, perhaps moved; NULL: no memory. */
+void *reading_grow(struct arena *arena, const void *items, size_t size, size_t count, size_t *room);
+/* True where `items` now has room for one more. */
+#define GROW(reading, items, count, room)                                                          \
+	((reading)->grown = reading_grow((reading)->arena, (items), sizeof *(items), (count), (room)), \
+	 (items) = (reading)->grown ? (reading)->grown : (items), (reading)->grown != NULL)
+
+/* ---- recording_tests.c: events of a test ------------------------------------- */
+
+int on_test_begin(struct reading *reading, struct event *event, struct err *reterr);
+int on_block(struct reading *reading, struct event *event, struct err *reterr);
+int on_stimulus(struct reading *reading, struct event *event, struct err *reterr);
+int on_step(struct reading *reading, struct event *event, struct err *reterr);
+int on_command(struct reading *reading, struct event *event, struct err *reterr);
+int on_mark(struct reading *reading, struct event *event, struct err *reterr);
+int on_attempt(struct reading *reading, struct event *event, struct err *reterr);
+int on_condition(struct reading *reading, struct event *event, struct err *reterr);
+int on_stimulus_end(struct reading *reading, struct event *event, struct err *reterr);
+int on_test_end(struct reading *reading, struct event *event, struct err *reterr);
+/* Of attempts of the stimulus that the run did not come to. */
+int add_attempts_not_made(struct reading *reading, struct event *event, const struct step *steps,
+                          size_t count, struct err *reterr);
+/* What is said of rest while the recording does not tell it. */
+extern const char READING_CUT_REST[];
 
 #endif

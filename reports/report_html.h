@@ -9,6 +9,10 @@
 extern const char report_css[];
 extern const size_t report_css_length;
 
+/* What was run: rig, suites, devices, instruments, links. */
+void html_identity(struct xml_out *out, const struct run_result *run);
+/* Whether a calibration had ended when the run began. */
+bool html_out_of_date(const struct run_facts *facts, const struct accuracy *accuracy);
 /* What did not pass, with its reason. Nothing where all passed. */
 void html_failures(struct xml_out *out, const struct run_result *run);
 /* The table of all tests. */

@@ -1,0 +1,116 @@
+/* SPDX-License-Identifier: Apache-2.0 */
+/* Lines, boxes, labels and the two axes of a chart. Ticks stand at 1, 2 and 5 times powers of ten.
+ */
+#include <math.h>
+#include <stdio.h>
+
+#include "chart.h"
+
+void chart_line(struct xml_out *out, double x1, double y1, double x2, double y2, const char *stroke,
+                const char *dash)
+{
+	xml_open(out, "line");
+	xml_attrf(out, "x1", "%.1f", x1);
+	xml_attrf(out, "y1", "%.1f", y1);
+	xml_attrf(out, "x2", "%.1f", x2);
+	xml_attrf(out, "y2", "%.1f", y2);
+	xml_attr(out, "stroke", stroke);
+	if (dash)
+		xml_attr(out, "stroke-dasharray", dash);
+	xml_close_void(out);
+}
+
+void chart_rectangle(struct xml_out *out, double x, double y, double width, double height,
+                     const char *fill, const char *opacity)
+{
+	xml_open(out, "rect");
+	xml_attrf(out, "x", "%.1f", x);
+	xml_attrf(out, "y", "%.1f", y);
+	xml_attrf(out, "width", "%.1f", width);
+	xml_attrf(out, "height", "%.1f", height);
+	xml_attr(out, "fill", fill);
+	if (opacity)
+		xml_attr(out, "fill-opacity", opacity);
+	xml_close_void(out);
+}
+
+void chart_label(struct xml_out *out, double x, double y, const char *anchor, const char *fill,
+                 const char *text)
+{
+	xml_open(out, "text");
+	xml_attrf(out, "x", "%.1f", x);
+	xml_attrf(out, "y", "%.1f", y);
+	xml_attr(out, "text-anchor", anchor);
+	xml_attr(out, "fill", fill);
+	xml_text(out, text);
+	xml_close(out);
+}
+
+/* 1, 2 or 5 times a power of ten, so that at most `most` ticks fit into the span. */
+static double tick_step(double span, int most)
+{
+	double raw = span / most, power = pow(10, floor(log10(raw)));
+	double share = raw / power;
+	return power * (share <= 1 ? 1 : share <= 2 ? 2 : share <= 5 ? 5 : 10);
+}
+
+static void tick_text(double value, double step, char *buffer, size_t size)
+{
+	double decimals = fmin(fmax(-floor(log10(step) + 1e-9), 0), 9);
+	(void)snprintf(buffer, size, "%.*f", (int)decimals, fabs(value) < step * 1e-6 ? 0.0 : value);
+}
+
+void chart_y_axis(const struct chart *chart, const struct chart_scale *scale,
+                  const struct channel_info *info)
+{
+	char text[80];
+	if (info->name_count) {
+		for (size_t i = 0; i < info->name_count && i < 24; i++) {
+			double value = info->named_values[i];
+			if (value < scale->low || value > scale->high)
+				continue;
+			chart_line(chart->out, scale->x0, chart_y(scale, value), scale->x1,
+			           chart_y(scale, value), "#ddd8ca", NULL);
+			(void)snprintf(text, sizeof text, "%.15s", info->value_names[i]);
+			chart_label(chart->out, scale->x0 - 6, chart_y(scale, value) + 4, "end", "#3a3833",
+			            text);
+		}
+		return;
+	}
+	double step = tick_step(scale->high - scale->low, 5);
+	double first = ceil(scale->low / step);
+	for (int i = 0; i < TICKS_MOST; i++) {
+		double value = (first + i) * step;
+		if (value > scale->high)
+			break;
+		double y = chart_y(scale, value);
+		chart_line(chart->out, scale->x0, y, scale->x1, y, "#ddd8ca", NULL);
+		tick_text(value, step, text, sizeof text);
+		chart_label(chart->out, scale->x0 - 6, y + 4, "end", "#3a3833", text);
+	}
+}
+
+void chart_x_axis(const struct chart *chart, double bottom)
+{
+	char text[80];
+	struct chart_scale scale = {.t0_ns = chart->t0_ns,
+	                            .t1_ns = chart->t1_ns,
+	                            .x0 = CHART_LEFT,
+	                            .x1 = CHART_WIDTH - CHART_RIGHT};
+	double begin = (double)chart->test->recorded->begin_ns;
+	double low = ((double)chart->t0_ns - begin) * chart->t_factor;
+	double high = ((double)chart->t1_ns - begin) * chart->t_factor;
+	double step = tick_step(high - low, 8), first = ceil(low / step);
+	for (int i = 0; i < TICKS_MOST; i++) {
+		double value = (first + i) * step;
+		if (value > high)
+			break;
+		double x = chart_x(&scale, value / chart->t_factor + begin);
+		chart_line(chart->out, x, bottom, x, bottom + 4, "#3a3833", NULL);
+		tick_text(value, step, text, sizeof text);
+		chart_label(chart->out, x, bottom + 16, "middle", "#3a3833", text);
+	}
+	(void)snprintf(text, sizeof text, "time since the stimulus began, %s", chart->t_unit);
+	chart_label(chart->out, (CHART_LEFT + CHART_WIDTH - CHART_RIGHT) / 2, bottom + 32, "middle",
+	            "#3a3833", text);
+}
