@@ -13,9 +13,9 @@ void load_control(struct load_machine *load, int control, int64_t now_ns)
 {
 	int rising = control & ~load->control;
 	if (!(control & 1))
-		load->enabled = false;
-	if ((rising & 1) && load->fault_code == 0) {
-		load->enabled = true;
+		load->enabled = load->enable_edge = false;
+	if (rising & 1) {
+		load->enable_edge = true;
 		load->heard_ns = now_ns; /* the silence is counted from the enable on */
 	}
 	if (rising & 2)
@@ -32,7 +32,9 @@ void load_step(struct load_machine *load, int64_t now_ns, bool pulses_on)
 	}
 	if (load->reset_edge && !silent)
 		load->fault_code = 0;
-	load->reset_edge = false;
+	if (load->enable_edge && load->fault_code == 0)
+		load->enabled = true;
+	load->reset_edge = load->enable_edge = false;
 	load->may_drive = pulses_on;
 	double wanted = load->enabled ? load->command_nm : 0;
 	load->torque_nm += load->lag_share * (wanted - load->torque_nm);

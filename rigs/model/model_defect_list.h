@@ -19,7 +19,7 @@ DEFECT(GAIN_SCHEDULED_WRONG, "gain-scheduled-wrong", "step_response",
 /* angle */
 DEFECT(ENCODER_OFFSET, "encoder-offset", "alignment",
        "the encoder offset is wrong by 12 deg electrical; the controller cannot see it")
-DEFECT(ENCODER_LINES_WRONG, "encoder-lines-wrong", "alignment",
+DEFECT(ENCODER_LINES_WRONG, "encoder-lines-wrong", "step_response",
        "the controller believes 1000 encoder lines for each 1024")
 DEFECT(DIRECTION_SWAPPED, "direction-swapped", "bench/direction",
        "two motor phases and the encoder's tracks are swapped: everything turns the other way")
@@ -89,5 +89,5 @@ DEFECT(FROZEN_IMAGE, "frozen-image", "life",
 DEFECT(STALE_IMAGE, "stale-image", "fault_reaction",
        "the values in the register image are 90 ms old, while the life counter runs on")
 DEFECT(WORD_ORDER_SWAPPED, "word-order-swapped", "agreement",
-       "values of two registers are answered with their words exchanged")
+       "the controller answers values of two registers with their words exchanged")
 /* clang-format on */

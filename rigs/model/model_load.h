@@ -29,7 +29,8 @@ struct load_machine {
 	/* state */
 	double torque_nm; /* behind the lag, before fading */
 	bool may_drive;
-	bool enabled, reset_edge;
+	bool enabled;
+	bool enable_edge, reset_edge; /* since the last period */
 	int fault_code;
 	int64_t heard_ns;
 	/* the register image */
