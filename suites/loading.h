@@ -112,7 +112,6 @@ bool checks_resolve(void *context, const struct field_table *table, const struct
 /* suite_limits.c */
 
 void limits_load(struct loading *l, const struct yaml_node *mapping, struct check_use *use);
-const struct field_table *limit_fields(void);
 
 /* suite_tests.c */
 

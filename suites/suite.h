@@ -108,8 +108,10 @@ int suite_select(struct suite *suite, const struct selection *selection, struct 
 size_t suite_selected(const struct suite *suite, size_t *ret_all);
 
 /*
- * Makes the test cases bench/watchdog:DEVICE and bench/direction from the rig.
- * Called by suite_load for the first suite of a run.
+ * Makes the test cases bench/watchdog:DEVICE and bench/direction (numbered where
+ * there are several) from the rig. suite_load() puts them before the tests of
+ * every suite; a run drops those of its second and later suites. Errors:
+ * ERR_NOMEM, ERR_FILE where the rig's own words cannot make them.
  */
 int bench_tests_make(const struct rig *rig, struct arena *arena, struct test **ret_tests,
                      size_t *ret_count, struct err *reterr);
@@ -122,6 +124,10 @@ void idle_channels(const struct rig *rig, unsigned char *set);
 
 /* Names of all fields for the reference and the schema. */
 const struct field_table *suite_fields(void);
+const struct field_table *sample_fields(void); /* `sample` */
 const struct field_table *test_fields(void);
+const struct field_table *check_fields(void);  /* beside the fields of the check's kind */
+const struct field_table *window_fields(void); /* a check's `window` */
+const struct field_table *limit_fields(void);  /* beside the options of the metric */
 
 #endif
