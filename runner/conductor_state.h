@@ -166,6 +166,9 @@ void rest_start(struct conductor *conductor, bool last, int64_t now_ns);
 enum progress rest_tick(struct conductor *conductor, int64_t now_ns, int64_t *due_ns);
 
 /* test_plans.c */
+/* What is polled in one test, or between tests (NULL). needed: a byte per channel, for its use. */
+int test_plan_make(const struct rig *rig, const struct test *test, unsigned char *needed,
+                   struct arena *arena, struct test_plan *plan, struct err *reterr);
 int test_plans_make(struct conductor *conductor, struct arena *arena, size_t *ret_row_values_most,
                     struct err *reterr);
 const struct test_plan *test_plan_of(const struct conductor *conductor, int suite, int test);

@@ -82,6 +82,12 @@ struct session {
 	struct capture capture;
 };
 
+/* One option or operand (name NULL) of the verbs that take a rig and suites; verb_run.c. */
+int run_option_take(struct run_options *options, const char *name, const char *value,
+                    struct err *reterr);
+/* With what the options hold; for those made by calloc. */
+void run_options_free(struct run_options *options);
+
 void session_init(struct session *session, const struct run_options *options);
 void session_release(struct session *session);
 /* Each returns 0, or an exit code after a message on stderr. */

@@ -188,6 +188,9 @@ static bool read_block(struct survey *survey, struct survey_block *block)
 		return false;
 	for (size_t c = 0; c < block->read->channel_count; c++) {
 		int channel = block->read->channels[c];
+		int at = survey->rig->channels[channel].address - block->read->address;
+		memcpy(survey->channel[channel].words, survey->reply->words + at,
+		       (size_t)survey->channel[channel].word_count * sizeof *survey->reply->words);
 		take_value(&survey->channel[channel],
 		           block_value(survey->rig, block->read, channel, survey->reply),
 		           survey->reply->received_ns);

@@ -25,7 +25,7 @@ struct survey_channel {
 	enum link_status status;
 	int exception;
 	char message[160];
-	uint16_t words[SURVEY_WORDS_SHOWN]; /* of the first reply */
+	uint16_t words[SURVEY_WORDS_SHOWN]; /* of the last reply */
 	int word_count;
 	char text[SURVEY_TEXT]; /* text channels, made safe for terminals */
 	double value;           /* NaN: none */

@@ -14,7 +14,7 @@
 static const int64_t IDLE_PERIOD_NS = 5 * NS_PER_MS;
 
 struct draft {
-	struct conductor *conductor;
+	const struct rig *rig;
 	struct arena *arena;
 	struct err *reterr;
 	struct read_block *blocks; /* of all groups */
@@ -30,7 +30,7 @@ static int no_memory(struct err *reterr)
 static int add_group(struct draft *draft, const unsigned char *needed, int group)
 {
 	struct read_plan plan;
-	if (plan_reads(draft->conductor->rig, needed, draft->arena, &plan, draft->reterr) < 0)
+	if (plan_reads(draft->rig, needed, draft->arena, &plan, draft->reterr) < 0)
 		return -1;
 	if (draft->count + plan.count > draft->room) {
 		size_t room = (draft->count + plan.count) * 2;
@@ -69,7 +69,7 @@ static int fill_group(struct draft *draft, int link, int group, int64_t period_n
 		if (draft->blocks[i].link != link || draft->block_groups[i] != group)
 			continue;
 		blocks[at].read = &draft->blocks[i];
-		block_request(draft->conductor->rig, &draft->blocks[i], &blocks[at].request);
+		block_request(draft->rig, &draft->blocks[i], &blocks[at].request);
 		at++;
 	}
 	*ret_group = (struct poll_group){.period_ns = period_ns, .blocks = blocks, .count = count};
@@ -79,7 +79,7 @@ static int fill_group(struct draft *draft, int link, int group, int64_t period_n
 static int fill_plan(struct draft *draft, const int64_t *periods, size_t groups,
                      struct test_plan *plan)
 {
-	const struct rig *rig = draft->conductor->rig;
+	const struct rig *rig = draft->rig;
 	struct poll_plan *plans = arena_array(draft->arena, rig->link_count, sizeof *plans);
 	if (!plans)
 		return no_memory(draft->reterr);
@@ -100,7 +100,7 @@ static int fill_plan(struct draft *draft, const int64_t *periods, size_t groups,
 static int plan_test(struct draft *draft, const struct test *test, unsigned char *needed,
                      struct test_plan *plan)
 {
-	const struct rig *rig = draft->conductor->rig;
+	const struct rig *rig = draft->rig;
 	int64_t periods[GROUPS_MOST] = {IDLE_PERIOD_NS};
 	size_t groups = test && test->group_count > 0 ? test->group_count : 1, fastest = 0;
 	unsigned char *sets[GROUPS_MOST];
@@ -132,6 +132,17 @@ static int plan_test(struct draft *draft, const struct test *test, unsigned char
 	return fill_plan(draft, periods, groups, plan);
 }
 
+int test_plan_make(const struct rig *rig, const struct test *test, unsigned char *needed,
+                   struct arena *arena, struct test_plan *plan, struct err *reterr)
+{
+	struct draft draft = {.rig = rig, .arena = arena, .reterr = reterr};
+	memset(needed, 0, rig->channel_count);
+	idle_channels(rig, needed);
+	if (test)
+		test_channels(rig, test, needed);
+	return plan_test(&draft, test, needed, plan);
+}
+
 int test_plans_make(struct conductor *conductor, struct arena *arena, size_t *ret_row_values_most,
                     struct err *reterr)
 {
@@ -149,14 +160,9 @@ int test_plans_make(struct conductor *conductor, struct arena *arena, size_t *re
 		size_t tests = idle ? 1 : conductor->config.suites[s]->test_count;
 		for (size_t t = 0; t < tests; t++) {
 			const struct test *test = idle ? NULL : &conductor->config.suites[s]->tests[t];
-			struct draft draft = {.conductor = conductor, .arena = arena, .reterr = reterr};
 			plans[at] = (struct test_plan){
 			    .suite = (int)s, .test = (int)t, .generation = idle ? -1 : (int)at};
-			memset(needed, 0, rig->channel_count);
-			idle_channels(rig, needed);
-			if (test)
-				test_channels(rig, test, needed);
-			if (plan_test(&draft, test, needed, &plans[at]) < 0)
+			if (test_plan_make(rig, test, needed, arena, &plans[at], reterr) < 0)
 				return -1;
 			for (size_t b = 0; b < plans[at].block_count; b++)
 				if (plans[at].blocks[b].channel_count > most)

@@ -98,22 +98,15 @@ static int take_wait(struct run_options *options, const char *value, struct err 
 	return 0;
 }
 
-struct taking {
-	struct run_options *options;
-	bool help;
-};
-
-static int take(void *context, const struct option_row *row, const char *value, struct err *reterr)
+int run_option_take(struct run_options *options, const char *name, const char *value,
+                    struct err *reterr)
 {
-	struct taking *taking = context;
-	struct run_options *options = taking->options;
-	if (!row) {
+	if (!name) {
 		if (options->suite_count == SUITES_MOST)
 			return err_set(reterr, ERR_USAGE, "more than %d suites", SUITES_MOST);
 		options->suite_paths[options->suite_count++] = value;
 		return 0;
 	}
-	const char *name = row->name;
 	if (strcmp(name, "rig") == 0)
 		options->rig_path = value;
 	else if (strcmp(name, "out") == 0)
@@ -122,8 +115,6 @@ static int take(void *context, const struct option_row *row, const char *value, 
 		options->defect = value;
 	else if (strcmp(name, "quiet") == 0)
 		options->quiet = true;
-	else if (strcmp(name, "help") == 0)
-		taking->help = true;
 	else if (strcmp(name, "wait") == 0)
 		return take_wait(options, value, reterr);
 	else if (strcmp(name, "set") == 0)
@@ -139,6 +130,30 @@ static int take(void *context, const struct option_row *row, const char *value, 
 	else if (strcmp(name, "tag") == 0)
 		return take_listed(options->tags, &options->tag_count, value, name, reterr);
 	return 0;
+}
+
+void run_options_free(struct run_options *options)
+{
+	for (size_t i = 0; i < options->override_count; i++)
+		free((void *)(uintptr_t)options->overrides[i].name);
+	for (size_t i = 0; i < options->address_count; i++)
+		free((void *)(uintptr_t)options->addresses[i].link);
+	free(options);
+}
+
+struct taking {
+	struct run_options *options;
+	bool help;
+};
+
+static int take(void *context, const struct option_row *row, const char *value, struct err *reterr)
+{
+	struct taking *taking = context;
+	if (row && strcmp(row->name, "help") == 0) {
+		taking->help = true;
+		return 0;
+	}
+	return run_option_take(taking->options, row ? row->name : NULL, value, reterr);
 }
 
 static void help(bool rehearse)
@@ -233,11 +248,7 @@ static int run_or_rehearse(int argc, char **argv, bool rehearse)
 	} else {
 		code = carry_out(options);
 	}
-	for (size_t i = 0; i < options->override_count; i++)
-		free((void *)(uintptr_t)options->overrides[i].name);
-	for (size_t i = 0; i < options->address_count; i++)
-		free((void *)(uintptr_t)options->addresses[i].link);
-	free(options);
+	run_options_free(options);
 	return code;
 }
 

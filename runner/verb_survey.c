@@ -30,24 +30,10 @@ static const struct option_row ROWS[] = {
 enum { ROW_COUNT = sizeof ROWS / sizeof ROWS[0], WATCH_PERIOD_MS = 500 };
 
 struct survey_options {
-	struct run_options run;
+	struct run_options *run;
 	const char *record;
 	bool watch, help;
 };
-
-static int take_link(struct run_options *options, const char *value, struct err *reterr)
-{
-	const char *equals = strchr(value, '=');
-	if (!equals || equals == value)
-		return err_set(reterr, ERR_USAGE, "--link wants LINK=ADDRESS, not '%s'", value);
-	if (options->address_count == sizeof options->addresses / sizeof options->addresses[0])
-		return err_set(reterr, ERR_USAGE, "too many --link");
-	char *name = strndup(value, (size_t)(equals - value));
-	if (!name)
-		return err_set(reterr, ERR_NOMEM, "no memory");
-	options->addresses[options->address_count++] = (struct link_address){name, equals + 1};
-	return 0;
-}
 
 static int take(void *context, const struct option_row *row, const char *value, struct err *reterr)
 {
@@ -55,16 +41,14 @@ static int take(void *context, const struct option_row *row, const char *value, 
 	if (!row)
 		return err_set(reterr, ERR_USAGE, "survey takes no '%s'; the rig file goes behind --rig",
 		               value);
-	if (strcmp(row->name, "rig") == 0)
-		options->run.rig_path = value;
-	else if (strcmp(row->name, "record") == 0)
+	if (strcmp(row->name, "record") == 0)
 		options->record = value;
-	else if (strcmp(row->name, "link") == 0)
-		return take_link(&options->run, value, reterr);
 	else if (strcmp(row->name, "watch") == 0)
 		options->watch = true;
-	else
+	else if (strcmp(row->name, "help") == 0)
 		options->help = true;
+	else
+		return run_option_take(options->run, row->name, value, reterr);
 	return 0;
 }
 
@@ -176,8 +160,8 @@ static int carry_out(const struct survey_options *options)
 	int code;
 	if (!session)
 		return EXIT_INTERNAL;
-	session_init(session, &options->run);
-	if (rig_load(options->run.rig_path, &session->arena, &session->faults, &session->rig, &err) < 0)
+	session_init(session, options->run);
+	if (rig_load(options->run->rig_path, &session->arena, &session->faults, &session->rig, &err) < 0)
 		code = session_exit_of(&err);
 	else if (!session->rig)
 		code = session_print_faults(&session->faults);
@@ -190,23 +174,21 @@ static int carry_out(const struct survey_options *options)
 
 int verb_survey(int argc, char **argv)
 {
-	struct survey_options *options = calloc(1, sizeof *options);
+	struct survey_options options = {.run = calloc(1, sizeof *options.run)};
 	struct err err = {0};
 	int code;
-	if (!options)
+	if (!options.run)
 		return EXIT_INTERNAL;
-	if (options_parse(argc, argv, ROWS, ROW_COUNT, take, options, &err) < 0) {
+	if (options_parse(argc, argv, ROWS, ROW_COUNT, take, &options, &err) < 0) {
 		code = session_exit_of(&err);
-	} else if (options->help) {
+	} else if (options.help) {
 		code = show_help();
-	} else if (!options->run.rig_path) {
+	} else if (!options.run->rig_path) {
 		(void)err_set(&err, ERR_USAGE, "survey needs --rig RIG; see 'drivetrial survey --help'");
 		code = session_exit_of(&err);
 	} else {
-		code = carry_out(options);
+		code = carry_out(&options);
 	}
-	for (size_t i = 0; i < options->run.address_count; i++)
-		free((void *)(uintptr_t)options->run.addresses[i].link);
-	free(options);
+	run_options_free(options.run);
 	return code;
 }
