@@ -77,7 +77,40 @@ static int judge_limits(struct judging *j, const struct check_use *use, size_t m
 	return 0;
 }
 
-/* Evaluates one check; a check that cannot be evaluated makes the test an error. */
+/*
+ * The shortest interval that was asked for: a check takes the longer of it and
+ * of what a channel's rows show, so that a slow group must not excuse gaps in
+ * a fast one.
+ */
+static int64_t shortest_interval(const struct test *test)
+{
+	int64_t shortest = test->group_count > 0 ? INT64_MAX : 0;
+	for (size_t i = 0; i < test->group_count; i++)
+		if (test->groups[i].every_ns < shortest)
+			shortest = test->groups[i].every_ns;
+	return shortest;
+}
+
+/* 0: evaluated; 1: it could not be, which is an error of the test; -1: memory ran out. */
+static int evaluate(struct judging *j, const struct check_input *in, const struct check_use *use,
+                    struct metric *metrics, size_t *ret_count)
+{
+	struct err err = {0};
+	int rc = use->kind->evaluate(in, use->params, metrics, ret_count, &err);
+	if (rc < 0 && err.code == ERR_NOMEM)
+		return out_of_memory(j->reterr);
+	/* A limit whose metric the check did not give has not been met. */
+	for (size_t i = 0; rc == 0 && i < use->limit_count; i++)
+		if (use->limits[i].metric < 0 || (size_t)use->limits[i].metric >= *ret_count)
+			rc = err_set(&err, ERR_STATE, "it gave no metric number %d", use->limits[i].metric);
+	if (rc == 0)
+		return 0;
+	conclude(j->result, VERDICT_ERROR, "check %s could not be evaluated: %s", use->name,
+	         err.message);
+	return 1;
+}
+
+/* As evaluate(); then every limit is judged. */
 static int judge_check(struct judging *j, struct arena *scratch, const struct check_use *use,
                        struct check_result *check)
 {
@@ -95,14 +128,15 @@ static int judge_check(struct judging *j, struct arena *scratch, const struct ch
 	    .machine = &j->rig->machine,
 	    .begin_ns = recorded->begin_ns,
 	    .end_ns = recorded->end_ns,
-	    .sample_ns = j->test->group_count > 0 ? j->test->groups[0].every_ns : 0,
+	    .sample_ns = shortest_interval(j->test),
 	    .scratch = scratch,
 	};
 	struct metric metrics[CHECK_METRICS_MOST];
 	memset(metrics, 0, sizeof metrics);
 	size_t count = 0;
-	if (use->kind->evaluate(&in, use->params, metrics, &count, j->reterr) < 0)
-		return -1;
+	int rc = evaluate(j, &in, use, metrics, &count);
+	if (rc != 0)
+		return rc;
 	check->metrics = arena_array(j->arena, count + 1, sizeof *check->metrics);
 	if (!check->metrics)
 		return out_of_memory(j->reterr);
@@ -113,11 +147,6 @@ static int judge_check(struct judging *j, struct arena *scratch, const struct ch
 		if (judge_limits(j, use, i, check) < 0)
 			return -1;
 	}
-	/* A limit whose metric the check did not give has not been met. */
-	for (size_t i = 0; i < use->limit_count; i++)
-		if (use->limits[i].metric < 0 || (size_t)use->limits[i].metric >= count)
-			return err_set(j->reterr, ERR_STATE, "check %s gave no metric number %d",
-			               use->kind->name, use->limits[i].metric);
 	return 0;
 }
 
@@ -215,7 +244,7 @@ static int judge_completed(struct judging *j)
 	arena_release(&scratch);
 	if (rc == 0)
 		conclude_limits(result);
-	return rc;
+	return rc < 0 ? -1 : 0;
 }
 
 /* The test that ran before this one, or NULL. */

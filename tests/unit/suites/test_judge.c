@@ -69,6 +69,25 @@ static int evaluate_mean(const struct check_input *in, const void *params, struc
 	return 0;
 }
 
+static int64_t seen_interval_ns;
+
+static int evaluate_broken(const struct check_input *in, const void *params, struct metric *metrics,
+                           size_t *ret_count, struct err *reterr)
+{
+	(void)params;
+	(void)metrics;
+	(void)ret_count;
+	seen_interval_ns = in->sample_ns;
+	return err_set(reterr, ERR_STATE, "a contradiction inside");
+}
+
+static const struct check_kind BROKEN_CHECK = {.name = "broken",
+                                               .text = "broken",
+                                               .fields = &NO_FIELDS,
+                                               .metrics = MEAN,
+                                               .metric_count = 1,
+                                               .evaluate = evaluate_broken};
+
 static const struct check_kind MEAN_CHECK = {.name = "mean",
                                              .text = "mean",
                                              .fields = &NO_FIELDS,
@@ -199,6 +218,26 @@ static void a_test_without_a_limit_never_passes(void **state)
 	struct fixture *f = *state;
 	f->use.limit_count = 0;
 	assert_int_equal(judged(f), VERDICT_ERROR);
+}
+
+static void a_check_that_breaks_makes_the_test_an_error(void **state)
+{
+	struct fixture *f = *state;
+	f->use.kind = &BROKEN_CHECK;
+	assert_int_equal(judged(f), VERDICT_ERROR);
+	assert_reason(f, "a contradiction inside");
+}
+
+/* Else the gaps of a fast group would be measured by the interval of a slow one. */
+static void checks_are_told_the_shortest_interval(void **state)
+{
+	struct fixture *f = *state;
+	struct sample_group groups[] = {{100 * NS_PER_MS, NULL, 0}, {2 * NS_PER_MS, NULL, 0}};
+	f->tests[1].groups = groups;
+	f->tests[1].group_count = 2;
+	f->use.kind = &BROKEN_CHECK;
+	assert_int_equal(judged(f), VERDICT_ERROR);
+	assert_int_equal(seen_interval_ns, 2 * NS_PER_MS);
 }
 
 /* --- data that are none ---------------------------------------------------- */
@@ -522,6 +561,8 @@ int main(void)
 	    TEST(an_interval_across_its_limit_is_inconclusive),
 	    TEST(one_failed_limit_of_two_fails_the_test),
 	    TEST(a_test_without_a_limit_never_passes),
+	    TEST(a_check_that_breaks_makes_the_test_an_error),
+	    TEST(checks_are_told_the_shortest_interval),
 	    TEST(an_emptied_recording_never_passes),
 	    TEST(nan_never_passes),
 	    TEST(a_life_counter_that_never_moves_makes_every_row_bad),
