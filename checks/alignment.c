@@ -76,7 +76,7 @@ static void fill(const struct angle *own, const struct angle *bench, struct metr
 	               "%s says %.2f deg, %s %.2f deg: the bench decides",
 	               own->rows.series.channel->name, own->mean, bench->rows.series.channel->name,
 	               bench->mean);
-	put_point(ret_metric, bench->rows.span.from_ns, bench->rows.span.to_ns, NAN);
+	put_point(ret_metric, bench->rows.span.from_ns, bench->rows.span.to_ns, (double)NAN);
 }
 
 static int evaluate(const struct check_input *in, const void *params, struct metric *ret_metrics,

@@ -110,7 +110,7 @@ int current_sufficient(const struct check_input *in, int channel, struct span sp
 	const struct channel_info *info = &in->channels[channel];
 	double minimum = share * in->machine->rated_current.value / info->unit->scale;
 	size_t low = 0;
-	double least = INFINITY;
+	double least = (double)INFINITY;
 	for (size_t i = 0; i < rows.count; i++) {
 		double value = series_value(&rows.series, rows.first + i);
 		double doubt = series_error_limit(&rows.series, rows.first + i) + info->resolution / 2;

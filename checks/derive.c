@@ -34,7 +34,7 @@ double derive_value(const struct derivation *derivation, const struct channel_in
 		bool given = derivation->inputs[i] >= 0;
 		si[i] = given ? input_values[i] * inputs_info[i].unit->scale : (double)NAN;
 		if (given && isnan(si[i]))
-			return NAN; /* missing, not left out */
+			return (double)NAN; /* missing, not left out */
 	}
 	return derivation->kind->value(si, machine, derivation->offset) / channel->unit->scale;
 }
@@ -94,7 +94,7 @@ static double modulus(const struct channel_info *channel)
 static struct reading read_between(struct builder *builder, int input, size_t row)
 {
 	const struct series *first = builder->inputs[0], *series = builder->inputs[input];
-	const struct reading none = {NAN, 0};
+	const struct reading none = {(double)NAN, 0};
 	double t = middle(first, row);
 	size_t *at = &builder->at[input];
 	while (*at + 2 < series->rows && middle(series, *at + 1) < t)

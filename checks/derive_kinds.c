@@ -52,7 +52,7 @@ static double angle_of(const double *values, const struct machine *machine, doub
 {
 	(void)machine;
 	if (values[0] == 0 && values[1] == 0)
-		return NAN; /* no vector, no direction */
+		return (double)NAN; /* no vector, no direction */
 	return turn_wrapped(atan2(values[1], values[0]) - offset);
 }
 
@@ -104,7 +104,7 @@ static double vector_angle(const double *values, const struct machine *machine, 
 	double alpha, beta;
 	clarke(values[0], values[1], values[3], &alpha, &beta);
 	if (alpha == 0 && beta == 0)
-		return NAN;
+		return (double)NAN;
 	return turn_wrapped(atan2(beta, alpha) - values[2] - offset);
 }
 
@@ -160,7 +160,7 @@ static int encoder_elec_dimension(const struct dimension *inputs, size_t count,
 static double encoder_radians(double counts, const struct machine *machine)
 {
 	if (machine->encoder_lines <= 0)
-		return NAN;
+		return (double)NAN;
 	return counts * 2 * PI / (4.0 * machine->encoder_lines);
 }
 
@@ -172,7 +172,7 @@ static double encoder_angle(const double *values, const struct machine *machine,
 static double encoder_angle_elec(const double *values, const struct machine *machine, double offset)
 {
 	if (machine->pole_pairs <= 0)
-		return NAN;
+		return (double)NAN;
 	return turn_wrapped(machine->pole_pairs * encoder_radians(values[0], machine) - offset);
 }
 

@@ -66,7 +66,7 @@ static double beta_regularised(double a, double b, double x, double y)
 double student_cdf(double t, double nu)
 {
 	if (isnan(t) || !(nu > 0))
-		return NAN;
+		return (double)NAN;
 	if (nu > 1e7)
 		return normal_cdf(t);
 	double t2 = t * t;
@@ -95,7 +95,7 @@ static double lower_quantile(double p, double nu)
 double student_quantile(double p, double nu)
 {
 	if (!(p > 0 && p < 1) || !(nu > 0))
-		return NAN;
+		return (double)NAN;
 	if (p == 0.5)
 		return 0;
 	return p < 0.5 ? lower_quantile(p, nu) : -lower_quantile(1 - p, nu);
@@ -103,5 +103,5 @@ double student_quantile(double p, double nu)
 
 double normal_quantile(double p)
 {
-	return student_quantile(p, INFINITY);
+	return student_quantile(p, (double)INFINITY);
 }

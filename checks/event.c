@@ -46,8 +46,8 @@ static void bound_below(const struct rows *rows, const struct mark *mark, struct
 	int64_t low = series_earliest(&rows->series, rows->first + latency->before) - mark->latest_ns;
 	latency->known = true;
 	latency->low = low > 0 ? seconds(low) : 0;
-	latency->high = INFINITY;
-	latency->value = INFINITY;
+	latency->high = (double)INFINITY;
+	latency->value = (double)INFINITY;
 }
 
 static void bound_above(const struct rows *rows, const struct mark *mark, struct latency *latency)
@@ -155,7 +155,7 @@ void event_off(const struct rows *rows, const struct mark *mark, double level, i
 		return;
 	}
 	if (latency->before + 1 < rows->count)
-		latency->value = NAN; /* it may have gone off, but not for long enough to say so */
+		latency->value = (double)NAN; /* it may have gone off, but not for long enough to say so */
 	(void)snprintf(latency->note, sizeof latency->note,
 	               "%s was not below %.3g %s for %.4g ms before the samples ended",
 	               rows->series.channel->name, level, rows->series.channel->unit->name,

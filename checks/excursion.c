@@ -44,7 +44,7 @@ static size_t largest_mean(const struct search *search, size_t half, double near
                            double *ret_rivals)
 {
 	size_t width = 2 * half + 1, best = search->begin;
-	double n = (double)width, largest = -INFINITY, sum = 0;
+	double n = (double)width, largest = -(double)INFINITY, sum = 0;
 	for (int pass = 0; pass < 2; pass++) {
 		size_t rivals = 0, ties = 0, first_best = 0;
 		sum = 0;
@@ -169,7 +169,7 @@ static void find(const struct search *search, struct excursion *ret)
 	}
 	double interval = (stretch_time(rows, search->end - 1) - stretch_time(rows, search->begin)) /
 	                  (double)(count - 1);
-	double highest = -INFINITY;
+	double highest = -(double)INFINITY;
 	for (size_t half = 1; 2 * half + 1 <= count && half <= count / 3; half += (half + 1) / 2) {
 		if (try_width(search, half, ret))
 			return;

@@ -454,7 +454,7 @@ static int evaluate(const struct check_input *in, const void *params, struct met
 	work.restart = optional_mark(in, own->restart);
 	work.reset = optional_mark(in, own->reset);
 	work.again = optional_mark(in, own->again);
-	work.idle = work.raised = NAN;
+	work.idle = work.raised = (double)NAN;
 	if (event_rows(in, own->indication, work.from, in->end_ns, &work.indication, reterr) < 0)
 		return -1;
 	if (work.indication.usable)

@@ -17,9 +17,9 @@ void metric_unknown(struct metric *metric, const struct metric_kind *kind, const
 	bool yes_no = kind->shape == METRIC_YES_NO;
 	*metric = (struct metric){
 	    .kind = kind,
-	    .value = NAN,
-	    .low = yes_no ? 0 : -INFINITY,
-	    .high = yes_no ? 1 : INFINITY,
+	    .value = (double)NAN,
+	    .low = yes_no ? 0 : -(double)INFINITY,
+	    .high = yes_no ? 1 : (double)INFINITY,
 	    .coverage = 1,
 	    .unit = unit ? unit : unit_one(),
 	    .evidence = evidence,

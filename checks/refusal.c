@@ -181,7 +181,7 @@ static int unchanged(const struct check_input *in, const struct refusal *own,
 		put_yes_no(metric, &metrics[UNCHANGED], evidence, !comparison.changed, comparison.why);
 	else
 		metric_unknown(metric, &metrics[UNCHANGED], NULL, evidence, "%s", comparison.why);
-	put_point(metric, outcome->sent_ns, outcome->received_ns, NAN);
+	put_point(metric, outcome->sent_ns, outcome->received_ns, (double)NAN);
 	return 0;
 }
 

@@ -223,7 +223,7 @@ static void never_settled(const struct response *response, const struct settling
 		low = fmax(low, stretch_time(rows, spread) - 2 * stretch_time_u(rows, spread));
 	ret->known = true;
 	ret->low = fmax(low - response->mark_half, 0);
-	ret->high = INFINITY;
+	ret->high = (double)INFINITY;
 	bool proven = low > first + 0.8 * (last - first);
 	ret->value = proven ? (double)INFINITY : (double)NAN;
 	ret->coverage = 0.95;
@@ -290,7 +290,7 @@ double noise_by_differences(const struct stretch *rows)
 size_t response_unsettled(const struct stretch *rows, double width)
 {
 	double noise = noise_by_differences(rows);
-	double least = INFINITY, largest = -INFINITY;
+	double least = (double)INFINITY, largest = -(double)INFINITY;
 	for (size_t row = rows->count; row-- > 0;) {
 		double y = stretch_value(rows, row);
 		least = fmin(least, y);

@@ -67,7 +67,7 @@ void summarise(const struct stretch *stretch, struct summary *ret_summary)
 {
 	size_t n = stretch->count;
 	struct sum sum = {0};
-	double least = INFINITY, largest = -INFINITY;
+	double least = (double)INFINITY, largest = -(double)INFINITY;
 	for (size_t i = 0; i < n; i++) {
 		double y = stretch_value(stretch, i);
 		sum_add(&sum, y);

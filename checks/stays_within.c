@@ -54,7 +54,7 @@ struct bounds {
 
 static struct bounds bounds_of(const struct stays_within *own)
 {
-	struct bounds bounds = {-INFINITY, INFINITY};
+	struct bounds bounds = {-(double)INFINITY, (double)INFINITY};
 	if (!isnan(own->between[0]))
 		bounds = (struct bounds){own->between[0], own->between[1]};
 	if (!isnan(own->above))
@@ -119,7 +119,8 @@ static void extremes(const struct rows *rows, bool sparse, const char *why,
 {
 	const struct channel_info *channel = rows->series.channel;
 	size_t at[2] = {0, 0};
-	double low[2] = {-INFINITY, INFINITY}, high[2] = {-INFINITY, INFINITY};
+	double low[2] = {-(double)INFINITY, (double)INFINITY},
+	       high[2] = {-(double)INFINITY, (double)INFINITY};
 	for (size_t i = 0; i < rows->count; i++) {
 		double value = series_value(&rows->series, rows->first + i), doubt = doubt_of(rows, i);
 		at[0] = value > series_value(&rows->series, rows->first + at[0]) ? i : at[0];

@@ -286,7 +286,7 @@ static double rated(const struct work *work)
 {
 	const struct machine *machine = work->in->machine;
 	const struct dimension dimension = work->channel->unit->dimension;
-	double value = NAN;
+	double value = (double)NAN;
 	if (dimension_agrees(dimension, DIM_SPEED_MECH))
 		value = machine->rated_speed.value;
 	else if (dimension_agrees(dimension, DIM_TORQUE))
@@ -415,7 +415,7 @@ static void unsettled(struct work *work)
 {
 	const struct response *response = &work->response;
 	double last = stretch_time(&response->rows, response->rows.count - 1);
-	double low_y = INFINITY, high_y = -INFINITY;
+	double low_y = (double)INFINITY, high_y = -(double)INFINITY;
 	for (size_t i = work->initial_count; i < response->rows.count; i++) {
 		low_y = fmin(low_y, stretch_value(&response->rows, i));
 		high_y = fmax(high_y, stretch_value(&response->rows, i));
@@ -434,11 +434,11 @@ static void unsettled(struct work *work)
 	    .known = true,
 	    .value = proven ? (double)INFINITY : (double)NAN,
 	    .low = fmax(t, 0),
-	    .high = INFINITY,
+	    .high = (double)INFINITY,
 	    .coverage = 0.95,
 	    .at_low = stretch_time(&response->rows, row),
 	    .at_high = last,
-	    .level = NAN,
+	    .level = (double)NAN,
 	};
 	(void)snprintf(measured.why, sizeof measured.why,
 	               "it had not settled by %.4g s after the command; the samples end at %.4g s", t,

@@ -179,7 +179,7 @@ static void fill(const struct angle *angle, double target, struct metric *ret_me
 	put_value(&ret_metrics[TORQUE_LOST], &metrics[TORQUE_LOST], unit_percent(), evidence,
 	          lost(error), lost(least), lost(fabs(error) + expanded), 0.95);
 	for (size_t i = 0; i < FIELD_COUNT(metrics); i++)
-		put_point(&ret_metrics[i], angle->rows.span.from_ns, angle->rows.span.to_ns, NAN);
+		put_point(&ret_metrics[i], angle->rows.span.from_ns, angle->rows.span.to_ns, (double)NAN);
 	struct metric_point *point = ret_metrics[WORST_ERROR].points;
 	point->earliest_ns = series_earliest(&angle->rows.series, angle->rows.first + at);
 	point->latest_ns = series_latest(&angle->rows.series, angle->rows.first + at);

@@ -136,7 +136,7 @@ static inline void field_absent(const struct field *field, unsigned char *params
 {
 	unsigned char *at = params + field->offset;
 	const int none = -1;
-	const double nan_value = NAN;
+	const double nan_value = (double)NAN;
 	const struct window window = {-1, 0, 0};
 	if (field->kind == FIELD_CHANNEL || field->kind == FIELD_MARK)
 		memcpy(at, &none, sizeof none);

@@ -169,10 +169,10 @@ static void missing_short_and_scattered_data_are_inconclusive(void **state)
 	play(&bench, 90, 90, 1, 4, 1, 6);
 	struct recorded_row *rows = bench.rec.rows[bench.own];
 	for (size_t i = 100; i < 120; i++)
-		rows[i].value = NAN;
+		rows[i].value = (double)NAN;
 	assert_unknown(run(&bench, "mean"), "no sample of own_angle");
 	for (size_t i = 0; i < bench.rec.series[bench.own].rows; i++)
-		rows[i].value = NAN;
+		rows[i].value = (double)NAN;
 	assert_unknown(run(&bench, "mean"), "measurement");
 	play(&bench, 90, 90, 1, 4, 1, 6);
 	check_window(&bench.use, 0, 0, MS(8));
@@ -258,7 +258,7 @@ static void alignment_without_its_data_is_inconclusive(void **state)
 	assert_int_equal(within(run(&bench, "frame_offset"), -2, 2), VERDICT_INCONCLUSIVE);
 	assert_int_equal(within(run(&bench, "frame_offset"), -5, 5), VERDICT_PASS);
 	for (size_t i = 60; i < 120; i++)
-		bench.rec.rows[bench.bench][i].value = NAN;
+		bench.rec.rows[bench.bench][i].value = (double)NAN;
 	assert_unknown(run(&bench, "frame_offset"), "no sample of bench_angle");
 	bench.rec.series[bench.bench].rows = 60;
 	assert_unknown(run(&bench, "frame_offset"), "bench_angle");
@@ -303,7 +303,7 @@ static void what_cannot_prove_it_is_refused(void **state)
 	check_int(&bench.use, "current", bench.torque);
 	assert_int_equal(check_verify(&bench.use, &bench.rec, NULL), -1);
 	use_torque_angle(&bench);
-	bench.rec.machine.rated_current.value = NAN;
+	bench.rec.machine.rated_current.value = (double)NAN;
 	assert_int_equal(check_verify(&bench.use, &bench.rec, NULL), -1);
 	recording_release(&bench.rec);
 }

@@ -31,22 +31,23 @@ static void guarded_passes_inside_fails_outside_and_else_leaves_open(void **stat
 		double low, high, min, max;
 		enum verdict verdict;
 	} rows[] = {
-	    {.016, .031, -INFINITY, .040, VERDICT_PASS},
-	    {.016, .031, -INFINITY, .031, VERDICT_PASS},
-	    {.016, .031, -INFINITY, .025, VERDICT_INCONCLUSIVE},
-	    {.016, .031, -INFINITY, .016, VERDICT_INCONCLUSIVE},
-	    {.016, .031, -INFINITY, .015, VERDICT_FAIL},
-	    {.016, .031, .016, INFINITY, VERDICT_PASS},
-	    {.016, .031, .020, INFINITY, VERDICT_INCONCLUSIVE},
-	    {.016, .031, .032, INFINITY, VERDICT_FAIL},
+	    {.016, .031, -(double)INFINITY, .040, VERDICT_PASS},
+	    {.016, .031, -(double)INFINITY, .031, VERDICT_PASS},
+	    {.016, .031, -(double)INFINITY, .025, VERDICT_INCONCLUSIVE},
+	    {.016, .031, -(double)INFINITY, .016, VERDICT_INCONCLUSIVE},
+	    {.016, .031, -(double)INFINITY, .015, VERDICT_FAIL},
+	    {.016, .031, .016, (double)INFINITY, VERDICT_PASS},
+	    {.016, .031, .020, (double)INFINITY, VERDICT_INCONCLUSIVE},
+	    {.016, .031, .032, (double)INFINITY, VERDICT_FAIL},
 	    {.016, .031, .01, .04, VERDICT_PASS},
 	    {.016, .031, .02, .03, VERDICT_INCONCLUSIVE},
-	    {.016, INFINITY, -INFINITY, .01, VERDICT_FAIL},
-	    {.016, INFINITY, -INFINITY, .02, VERDICT_INCONCLUSIVE},
-	    {-INFINITY, INFINITY, -INFINITY, INFINITY, VERDICT_INCONCLUSIVE},
-	    {NAN, .031, -INFINITY, .04, VERDICT_INCONCLUSIVE},
-	    {.016, NAN, -INFINITY, .04, VERDICT_INCONCLUSIVE},
-	    {.031, .016, -INFINITY, .04, VERDICT_INCONCLUSIVE},
+	    {.016, (double)INFINITY, -(double)INFINITY, .01, VERDICT_FAIL},
+	    {.016, (double)INFINITY, -(double)INFINITY, .02, VERDICT_INCONCLUSIVE},
+	    {-(double)INFINITY, (double)INFINITY, -(double)INFINITY, (double)INFINITY,
+	     VERDICT_INCONCLUSIVE},
+	    {(double)NAN, .031, -(double)INFINITY, .04, VERDICT_INCONCLUSIVE},
+	    {.016, (double)NAN, -(double)INFINITY, .04, VERDICT_INCONCLUSIVE},
+	    {.031, .016, -(double)INFINITY, .04, VERDICT_INCONCLUSIVE},
 	};
 	for (size_t i = 0; i < sizeof rows / sizeof rows[0]; i++)
 		assert_int_equal(verdict_of(.0235, rows[i].low, rows[i].high, rows[i].min, rows[i].max,
@@ -57,13 +58,15 @@ static void guarded_passes_inside_fails_outside_and_else_leaves_open(void **stat
 static void simple_goes_by_the_value_and_unknown_stays_open(void **state)
 {
 	(void)state;
-	const double inf = INFINITY;
+	const double inf = (double)INFINITY;
 	assert_int_equal(verdict_of(.0235, .016, .031, -inf, .024, DECISION_SIMPLE), VERDICT_PASS);
 	assert_int_equal(verdict_of(.0235, .016, .031, -inf, .0235, DECISION_SIMPLE), VERDICT_PASS);
 	assert_int_equal(verdict_of(.0235, .016, .031, -inf, .023, DECISION_SIMPLE), VERDICT_FAIL);
 	assert_int_equal(verdict_of(inf, .9, inf, -inf, .3, DECISION_SIMPLE), VERDICT_FAIL);
-	assert_int_equal(verdict_of(NAN, .1, inf, -inf, .3, DECISION_SIMPLE), VERDICT_INCONCLUSIVE);
-	assert_int_equal(verdict_of(NAN, -inf, inf, -inf, inf, DECISION_SIMPLE), VERDICT_INCONCLUSIVE);
+	assert_int_equal(verdict_of((double)NAN, .1, inf, -inf, .3, DECISION_SIMPLE),
+	                 VERDICT_INCONCLUSIVE);
+	assert_int_equal(verdict_of((double)NAN, -inf, inf, -inf, inf, DECISION_SIMPLE),
+	                 VERDICT_INCONCLUSIVE);
 }
 
 static void the_reason_has_numbers_units_and_the_note(void **state)
@@ -71,7 +74,7 @@ static void the_reason_has_numbers_units_and_the_note(void **state)
 	(void)state;
 	char reason[512];
 	struct metric metric = metric_of(.0235, .016, .031);
-	struct limit limit = {.min = -INFINITY, .max = .015, .shown_unit = unit_find("ms", 2)};
+	struct limit limit = {.min = -(double)INFINITY, .max = .015, .shown_unit = unit_find("ms", 2)};
 	(void)snprintf(metric.note, sizeof metric.note, "polled every 10 ms");
 	decide(&metric, &limit, reason, sizeof reason);
 	assert_string_equal(reason, "rise_time 23.5 ms: its interval 16 ms to 31 ms lies outside the "
@@ -139,10 +142,10 @@ static void wrong_verdicts_are_rare_at_every_distance(void **state)
 		int passed = 0, failed = 0;
 		for (int i = 0; i < draws; i++) {
 			double e = random_normal(&random);
-			passed += verdict_of(distance + e, distance + e - 2, distance + e + 2, -INFINITY, 0,
-			                     DECISION_GUARDED) == VERDICT_PASS;
-			failed += verdict_of(-distance + e, -distance + e - 2, -distance + e + 2, -INFINITY, 0,
-			                     DECISION_GUARDED) == VERDICT_FAIL;
+			passed += verdict_of(distance + e, distance + e - 2, distance + e + 2,
+			                     -(double)INFINITY, 0, DECISION_GUARDED) == VERDICT_PASS;
+			failed += verdict_of(-distance + e, -distance + e - 2, -distance + e + 2,
+			                     -(double)INFINITY, 0, DECISION_GUARDED) == VERDICT_FAIL;
 		}
 		assert_true(passed <= 0.025 * draws + 2.33 * sqrt(0.025 * draws));
 		assert_true(failed <= 0.025 * draws + 2.33 * sqrt(0.025 * draws));

@@ -46,7 +46,7 @@ static void angles_of_components_are_atan2(void **state)
 	            1e-8, "deg");
 	assert_near(compute("angle_of", amplitudes, (double[]){-1, 0}, 2, "deg_el", 0), 180, 1e-12, "");
 	assert_true(isnan(compute("angle_of", amplitudes, (double[]){0, 0}, 2, "deg", 0)));
-	assert_true(isnan(compute("angle_of", amplitudes, (double[]){NAN, 1}, 2, "deg", 0)));
+	assert_true(isnan(compute("angle_of", amplitudes, (double[]){(double)NAN, 1}, 2, "deg", 0)));
 	assert_near(compute("magnitude_of", amplitudes, (double[]){3, 4}, 2, "A_peak", 0), 5, 1e-12,
 	            "");
 	assert_near(compute("magnitude_of", amplitudes, (double[]){3, 4}, 2, "A_rms", 0), 5 / sqrt(2),

@@ -133,7 +133,7 @@ static void latency_is_the_guaranteed_interval_of_the_polls(void **state)
 	            {.015, VERDICT_FAIL}};
 	char reason[512];
 	for (size_t i = 0; i < 5; i++) {
-		struct limit limit = {.min = -INFINITY, .max = rows[i].limit};
+		struct limit limit = {.min = -(double)INFINITY, .max = rows[i].limit};
 		assert_int_equal(decide(metric, &limit, reason, sizeof reason), rows[i].verdict);
 	}
 	/* A register image refreshed every 3 ms may be as much older. */
@@ -219,11 +219,11 @@ static void what_never_comes_fails_and_does_not_pass_by_ending_early(void **stat
 		const struct metric *metric = check_metric(&bench.use, never[i]);
 		assert_true(metric->low > .28 && metric->low < .29);
 		assert_true(isinf(metric->high) && isinf(metric->value));
-		struct limit limit = {.min = -INFINITY, .max = .06};
+		struct limit limit = {.min = -(double)INFINITY, .max = .06};
 		assert_int_equal(decide(metric, &limit, reason, sizeof reason), VERDICT_FAIL);
 		limit.rule = DECISION_SIMPLE;
 		assert_int_equal(decide(metric, &limit, reason, sizeof reason), VERDICT_FAIL);
-		limit = (struct limit){.min = -INFINITY, .max = .5}; /* longer than was watched */
+		limit = (struct limit){.min = -(double)INFINITY, .max = .5}; /* longer than was watched */
 		assert_int_equal(decide(metric, &limit, reason, sizeof reason), VERDICT_INCONCLUSIVE);
 	}
 	assert_yes_no(check_metric(&bench.use, "code_right"), false);
@@ -275,7 +275,7 @@ static void missing_rows_widen_and_never_pass(void **state)
 	for (size_t i = 0; i < bench.rec.series[bench.code].rows; i++) {
 		double t = (double)rows[i].sent / 1e6;
 		if (t > 4 && t < 60)
-			rows[i].value = NAN; /* where the answer lies */
+			rows[i].value = (double)NAN; /* where the answer lies */
 	}
 	const struct metric *metric = run(&bench, "detection_time");
 	assert_true(metric->low < .005 && metric->high > .055);
@@ -287,11 +287,11 @@ static void missing_rows_widen_and_never_pass(void **state)
 	rows = bench.rec.rows[bench.code];
 	for (size_t i = 0; i < bench.rec.series[bench.code].rows; i++)
 		if (rows[i].sent > MS(350) && rows[i].sent < MS(450))
-			rows[i].value = NAN;
+			rows[i].value = (double)NAN;
 	assert_unknown(run(&bench, "stays_latched"), "no sample");
 	assert_known(check_metric(&bench.use, "detection_time"));
 	for (size_t i = 0; i < bench.rec.series[bench.code].rows; i++)
-		rows[i].value = NAN;
+		rows[i].value = (double)NAN;
 	assert_unknown(run(&bench, "detection_time"), "is a measurement");
 	assert_unknown(check_metric(&bench.use, "code_right"), "measurement");
 	recording_release(&bench.rec);
@@ -353,7 +353,7 @@ static void contradicting_fields_are_refused(void **state)
 	play(&bench, &healthy);
 	struct err err = {0};
 	assert_int_equal(check_verify(&bench.use, &bench.rec, &err), 0);
-	check_double(&bench.use, "torque_below", NAN);
+	check_double(&bench.use, "torque_below", (double)NAN);
 	assert_int_equal(check_verify(&bench.use, &bench.rec, &err), -1);
 	check_double(&bench.use, "torque_below", -1);
 	assert_int_equal(check_verify(&bench.use, &bench.rec, NULL), -1);

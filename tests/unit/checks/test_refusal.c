@@ -113,11 +113,11 @@ static void missing_data_are_inconclusive_unless_another_channel_changed(void **
 	bench_init(&bench);
 	play(&bench, OUTCOME_EXCEPTION, 3, 3, 0);
 	for (size_t i = 100; i < bench.rec.series[bench.speed].rows; i++)
-		bench.rec.rows[bench.speed][i].value = NAN;
+		bench.rec.rows[bench.speed][i].value = (double)NAN;
 	assert_unknown(run(&bench, "unchanged"), "measurement");
 	play(&bench, OUTCOME_EXCEPTION, 3, 3, 5);
 	for (size_t i = 100; i < bench.rec.series[bench.speed].rows; i++)
-		bench.rec.rows[bench.speed][i].value = NAN;
+		bench.rec.rows[bench.speed][i].value = (double)NAN;
 	assert_yes_no(run(&bench, "unchanged"), false);
 	play(&bench, OUTCOME_EXCEPTION, 3, 3, 0);
 	bench.rec.series[bench.speed].rows = 102; /* ends too early */

@@ -93,10 +93,10 @@ static void without_a_command_or_rows_nothing_is_proven(void **state)
 	assert_unknown(run(&bench), "anew");
 	play(&bench, 100, 99, 101, 2);
 	for (size_t i = 80; i < 120; i++)
-		bench.rec.rows[bench.bench][i].value = NAN;
+		bench.rec.rows[bench.bench][i].value = (double)NAN;
 	assert_unknown(run(&bench), "no sample");
 	for (size_t i = 0; i < bench.rec.series[bench.bench].rows; i++)
-		bench.rec.rows[bench.bench][i].value = NAN;
+		bench.rec.rows[bench.bench][i].value = (double)NAN;
 	assert_unknown(run(&bench), "measurement");
 	for (size_t i = 0; i < bench.rec.series[bench.own].rows; i++)
 		bench.rec.rows[bench.own][i].value = -99;

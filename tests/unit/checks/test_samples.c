@@ -53,7 +53,7 @@ static void each_fault_of_rows_is_named(void **state)
 	assert_false(series_fault(series, 0, 9, MS(10), why, sizeof why));
 	assert_true(series_fault(series, 0, 9, MS(9), why, sizeof why));
 	assert_non_null(strstr(why, "no sample from 1.000 ms to 11.000 ms"));
-	rows[5].value = NAN;
+	rows[5].value = (double)NAN;
 	assert_true(series_fault(series, 0, 9, 0, why, sizeof why));
 	assert_non_null(strstr(why, "no value at 51.000 ms"));
 	assert_false(series_fault(series, 0, 4, 0, why, sizeof why));
@@ -145,7 +145,7 @@ static void only_rows_wholly_in_the_span_belong_to_it(void **state)
 	assert_int_equal(rows_take(&in, channel, (struct span){MS(98.1), MS(200.9)}, &rows, NULL), 0);
 	assert_int_equal(rows.first, 11);
 	assert_int_equal(rows.count, 9);
-	rec.rows[channel][15].value = NAN;
+	rec.rows[channel][15].value = (double)NAN;
 	assert_int_equal(rows_take(&in, channel, (struct span){MS(98), MS(201)}, &rows, NULL), 0);
 	assert_int_equal(rows.count, 10);
 	assert_int_equal(rows.missing, 1);

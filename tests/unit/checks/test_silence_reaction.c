@@ -48,7 +48,7 @@ static const struct metric *run(struct bench *bench, const char *metric)
 static enum verdict at_most(const struct metric *metric, double max)
 {
 	char reason[512];
-	struct limit limit = {.min = -INFINITY, .max = max};
+	struct limit limit = {.min = -(double)INFINITY, .max = max};
 	return decide(metric, &limit, reason, sizeof reason);
 }
 
@@ -103,11 +103,11 @@ static void missing_data_are_inconclusive(void **state)
 	for (size_t i = 0; i < bench.rec.series[bench.torque].rows; i++)
 		if (bench.rec.rows[bench.torque][i].sent > MS(300) &&
 		    bench.rec.rows[bench.torque][i].sent < MS(380))
-			bench.rec.rows[bench.torque][i].value = NAN;
+			bench.rec.rows[bench.torque][i].value = (double)NAN;
 	assert_known(run(&bench, "reaction_time"));
 	assert_unknown(check_metric(&bench.use, "stays_off"), "no sample");
 	for (size_t i = 0; i < bench.rec.series[bench.torque].rows; i++)
-		bench.rec.rows[bench.torque][i].value = NAN;
+		bench.rec.rows[bench.torque][i].value = (double)NAN;
 	assert_unknown(run(&bench, "reaction_time"), "measurement");
 	play(&bench, -50, 1e9, 9); /* nothing there that could go off */
 	assert_unknown(run(&bench, "reaction_time"), "not surely above");

@@ -63,7 +63,7 @@ static const struct metric *run(struct bench *bench, const char *metric)
 static enum verdict at_most(const struct metric *metric, double max)
 {
 	char reason[512];
-	struct limit limit = {.min = -INFINITY, .max = max};
+	struct limit limit = {.min = -(double)INFINITY, .max = max};
 	enum verdict verdict = decide(metric, &limit, reason, sizeof reason);
 	if (verdict != VERDICT_PASS)
 		assert_true(strlen(reason) > 20);
@@ -234,7 +234,7 @@ static void blank(struct bench *bench, double from_ms, double to_ms)
 	struct recorded_row *rows = bench->rec.rows[bench->speed];
 	for (size_t i = 0; i < bench->rec.series[bench->speed].rows; i++)
 		if (rows[i].sent >= MS(from_ms) && rows[i].sent <= MS(to_ms))
-			rows[i].value = NAN;
+			rows[i].value = (double)NAN;
 }
 
 static void gaps_matter_where_the_answer_lies(void **state)
@@ -297,7 +297,7 @@ static void percent_of_rated_is_of_the_nameplate(void **state)
 	/* 16.303 % of a step of 600 rpm are 3.261 % of 3000 rpm. */
 	assert_near(run(&bench, "overshoot")->value, 16.303353 * 600 / 3000, 0.05, "%");
 	assert_int_equal(check_verify(&bench.use, &bench.rec, NULL), 0);
-	bench.rec.machine.rated_speed.value = NAN;
+	bench.rec.machine.rated_speed.value = (double)NAN;
 	assert_int_equal(check_verify(&bench.use, &bench.rec, NULL), -1);
 	assert_unknown(run(&bench, "overshoot"), "no rated value");
 	recording_release(&bench.rec);
