@@ -4,16 +4,16 @@
  * counts as gone. All conditions but the watchdog's are watched whether the
  * drive runs or not. The first fault wins; its code stays until it is reset.
  *
- *   fault            code  stands for  condition / gone
- *   overcurrent       1    at once     comparator above the limit / below it
- *   overvoltage       2    0.3 ms      DC link above the limit / below 97 % of it
- *   encoder loss      3    0.3 ms       no differential signal level at the receiver / level back
- *   overtemperature   4    20 ms       winding sensor above the limit / 5 K below it
- *   undervoltage      5    5 ms        DC link below the limit / above 103 % of it
- *   phase loss        6    10 ms       current missing that was commanded, and one phase without /
- * pulses off torque off        7    100 ms      the channels of safe torque off differ / agree
- * again channels differ link watchdog     9    at once     enabled, and silent for longer than its
- * time / heard again, or enable taken away
+ *   fault            code  stands for  condition; gone when
+ *   overcurrent       1    at once     comparator above the limit; below it
+ *   overvoltage       2    0.3 ms      DC link above the limit; below 97 % of it
+ *   encoder loss      3    0.3 ms      no differential signal level; level back
+ *   overtemperature   4    20 ms       winding sensor above the limit; 5 K below it
+ *   undervoltage      5    5 ms        DC link below the limit; above 103 % of it
+ *   phase loss        6    10 ms       current missing, one phase without; pulses off
+ *   torque off        7    100 ms      its two channels differ; they agree again
+ *   link watchdog     9    at once     enabled and silent for its time; heard again,
+ *                                      or enable taken away
  *
  * Encoder loss by missing edges alone was rejected: at standstill there are
  * none, and that is where a lost encoder shakes the shaft at the next command.

@@ -6,22 +6,28 @@
  * RELAY(name, relay, text), TEXT(name, member, text)
  */
 /* clang-format off */
-SHOWN("controller.speed", MODEL_CONTROLLER, DIM_SPEED_MECH, HOLDS_DOUBLE, image.speed_rad_s, "by its encoder")
-SHOWN("controller.dc_voltage", MODEL_CONTROLLER, DIM_VOLTAGE, HOLDS_DOUBLE, image.dc_voltage_v, "of its DC link")
-SHOWN("controller.current_d", MODEL_CONTROLLER, DIM_CURRENT_AMPLITUDE, HOLDS_DOUBLE, image.current_d_a,
+SHOWN("controller.speed", MODEL_CONTROLLER, DIM_SPEED_MECH, HOLDS_DOUBLE, image.speed_rad_s,
+      "by its encoder")
+SHOWN("controller.dc_voltage", MODEL_CONTROLLER, DIM_VOLTAGE, HOLDS_DOUBLE, image.dc_voltage_v,
+      "of its DC link")
+SHOWN("controller.current_d", MODEL_CONTROLLER, DIM_CURRENT_AMPLITUDE, HOLDS_DOUBLE,
+      image.current_d_a,
       "in the frame that it believes")
-SHOWN("controller.current_q", MODEL_CONTROLLER, DIM_CURRENT_AMPLITUDE, HOLDS_DOUBLE, image.current_q_a,
+SHOWN("controller.current_q", MODEL_CONTROLLER, DIM_CURRENT_AMPLITUDE, HOLDS_DOUBLE,
+      image.current_q_a,
       "in the frame that it believes")
 SHOWN("controller.torque", MODEL_CONTROLLER, DIM_TORQUE, HOLDS_DOUBLE, image.torque_nm,
       "estimate from these currents")
-SHOWN("controller.winding_temperature", MODEL_CONTROLLER, DIM_TEMPERATURE, HOLDS_DOUBLE, image.temperature_c,
+SHOWN("controller.winding_temperature", MODEL_CONTROLLER, DIM_TEMPERATURE, HOLDS_DOUBLE,
+      image.temperature_c,
       "by its sensor")
 SHOWN("controller.life", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_LIFE, image.life,
       "milliseconds, modulo 65536, of the register image")
 SHOWN("controller.fault_code", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_INT, image.fault_code,
       "0 none, 1 overcurrent, 2 overvoltage, 3 encoder loss, 4 overtemperature, 5 undervoltage, "
       "6 phase loss, 7 safe torque off channels differ, 9 link watchdog")
-SHOWN("controller.running", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_BOOL, image.running, "1: enabled and controlling")
+SHOWN("controller.running", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_BOOL, image.running,
+      "1: enabled and controlling")
 SHOWN("controller.ready", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_BOOL, image.ready,
       "1: no fault, may be enabled or is")
 SHOWN("controller.state", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_INT, image.state,
@@ -42,9 +48,12 @@ SHOWN("controller.voltage_alpha_command", MODEL_CONTROLLER, DIM_VOLTAGE, HOLDS_D
       image.voltage_alpha_v, "along phase a, of the same instant as the duties")
 SHOWN("controller.voltage_beta_command", MODEL_CONTROLLER, DIM_VOLTAGE, HOLDS_DOUBLE,
       image.voltage_beta_v, "across phase a, of the same instant as the duties")
-SHOWN("controller.duty_a", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[0], "0 to 1, upper switch")
-SHOWN("controller.duty_b", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[1], "0 to 1, upper switch")
-SHOWN("controller.duty_c", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[2], "0 to 1, upper switch")
+SHOWN("controller.duty_a", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[0], "0 to 1,
+      upper switch")
+SHOWN("controller.duty_b", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[1], "0 to 1,
+      upper switch")
+SHOWN("controller.duty_c", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[2], "0 to 1,
+      upper switch")
 TEXT("controller.firmware", firmware, "version")
 TEXT("controller.serial_number", serial_number, "serial number")
 WRITTEN("controller.speed_command", WRITE_SPEED, MODEL_CONTROLLER, DIM_SPEED_MECH, -1e5, 1e5, HOLDS_DOUBLE,

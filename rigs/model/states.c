@@ -3,15 +3,16 @@
  * The state machine of the controller, as a table. An event that is not in a
  * state's rows does nothing there.
  *
- *   from       event                                   to         what happens
- *   starting   self-test over (5 ms)                   ready
- *   ready      enable given (rising edge)              running    loops cleared, encoder counter
- *                                                                 set, pulses on
- *   running    enable taken                            ready      pulses off: the shaft coasts
- *   any        a fault has stood for its filter time   fault      pulses off at once, code latched
- *   running    safe torque off demanded                inhibited  pulses off in the hardware; no
- * fault fault      reset edge, cause gone, enable away     ready      code cleared fault      reset
- * edge, cause gone, enable stands   inhibited  code cleared inhibited  enable taken ready
+ *   from       event                                 to         what happens
+ *   starting   self-test over (5 ms)                 ready
+ *   ready      enable given (rising edge)            running    loops cleared, encoder
+ *                                                               counter set, pulses on
+ *   running    enable taken                          ready      pulses off: coasting
+ *   running    safe torque off demanded              inhibited  pulses off, no fault
+ *   any        a fault stood for its filter time     fault      pulses off, code latched
+ *   fault      reset edge, cause gone, enable away   ready      code cleared
+ *   fault      reset edge, cause gone, enable there  inhibited  code cleared
+ *   inhibited  enable taken                          ready
  *
  * A reset while the cause lasts is lost: it does not take effect later.
  * A fault in the state inhibited leads to fault again. While safe torque off is demanded,
