@@ -48,12 +48,12 @@ SHOWN("controller.voltage_alpha_command", MODEL_CONTROLLER, DIM_VOLTAGE, HOLDS_D
       image.voltage_alpha_v, "along phase a, of the same instant as the duties")
 SHOWN("controller.voltage_beta_command", MODEL_CONTROLLER, DIM_VOLTAGE, HOLDS_DOUBLE,
       image.voltage_beta_v, "across phase a, of the same instant as the duties")
-SHOWN("controller.duty_a", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[0], "0 to 1,
-      upper switch")
-SHOWN("controller.duty_b", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[1], "0 to 1,
-      upper switch")
-SHOWN("controller.duty_c", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[2], "0 to 1,
-      upper switch")
+SHOWN("controller.duty_a", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[0],
+      "0 to 1, upper switch")
+SHOWN("controller.duty_b", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[1],
+      "0 to 1, upper switch")
+SHOWN("controller.duty_c", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_DOUBLE, image.duty[2],
+      "0 to 1, upper switch")
 TEXT("controller.firmware", firmware, "version")
 TEXT("controller.serial_number", serial_number, "serial number")
 WRITTEN("controller.speed_command", WRITE_SPEED, MODEL_CONTROLLER, DIM_SPEED_MECH, -1e5, 1e5, HOLDS_DOUBLE,
