@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: Apache-2.0 */
 /*
  * The step response: finds the levels before and after, proves that they are
- * steady, and hands the rows between to response.c.
+ * steady (step_levels.c), and hands the rows between to response.c.
  *
  * Both levels are measured, for a command says what should be, not what was.
  * The histogram method of IEEE Std 181 was rejected as the default: it finds
@@ -10,16 +10,8 @@
 #include <stdio.h>
 
 #include "check.h"
-#include "response.h"
-#include "window.h"
+#include "step_work.h"
 
-struct step_response {
-	int channel, from, command, percent_of;
-	int64_t for_ns, initial_ns, final_ns;
-	double rise_from, rise_to, dead_level, band;
-};
-
-enum { OF_STEP, OF_RATED };
 static const char *const percent_choices[] = {"step", "rated", NULL};
 
 #define AT(member) offsetof(struct step_response, member)
@@ -146,25 +138,7 @@ static const struct metric_kind metrics[] = {
     {"ripple_rms", METRIC_LEVEL, "standard deviation of the settled part, as sampled", NULL},
 };
 
-enum { FINAL_ROWS_LEAST = 5, INITIAL_ROWS_LEAST = 3 };
-
-struct work {
-	const struct check_input *in;
-	const struct step_response *params;
-	const struct channel_info *channel;
-	struct metric *metrics;
-	struct rows rows;
-	size_t initial_count, final_begin;
-	int64_t origin_ns;
-	const struct mark *mark;
-	struct steadiness initial, final;
-	double final_limit; /* limits of error of the final value */
-	struct budget final_budget, initial_budget;
-	struct response response;
-	char why[224];
-};
-
-static const struct unit *metric_unit(const struct work *work, size_t metric)
+static const struct unit *metric_unit(const struct step_work *work, size_t metric)
 {
 	switch (metrics[metric].shape) {
 	case METRIC_TIME:
@@ -176,24 +150,24 @@ static const struct unit *metric_unit(const struct work *work, size_t metric)
 	}
 }
 
-static void unknown(struct work *work, size_t metric, const char *why)
+static void unknown(struct step_work *work, size_t metric, const char *why)
 {
 	metric_unknown(&work->metrics[metric], &metrics[metric], metric_unit(work, metric),
 	               work->channel->evidence, "%s", why);
 }
 
-static void all_unknown(struct work *work, const char *why)
+static void all_unknown(struct step_work *work, const char *why)
 {
 	for (size_t i = 0; i < FIELD_COUNT(metrics); i++)
 		unknown(work, i, why);
 }
 
-static int64_t at_ns(const struct work *work, double t)
+static int64_t at_ns(const struct step_work *work, double t)
 {
 	return work->origin_ns + (int64_t)llround(t * 1e9);
 }
 
-static void put(struct work *work, size_t index, const struct measured *measured)
+static void put(struct step_work *work, size_t index, const struct measured *measured)
 {
 	if (!measured->known) {
 		unknown(work, index, measured->why);
@@ -219,7 +193,7 @@ static void put(struct work *work, size_t index, const struct measured *measured
 	metric->point_count = 1;
 }
 
-static void put_level(struct work *work, size_t index, double value, double low, double high,
+static void put_level(struct step_work *work, size_t index, double value, double low, double high,
                       double coverage)
 {
 	struct measured measured = {
@@ -236,182 +210,8 @@ static void put_level(struct work *work, size_t index, double value, double low,
 	put(work, index, &measured);
 }
 
-/* The rows before the mark, between, and of the last part. False: too few; work->why says which. */
-static bool split(struct work *work)
-{
-	const struct step_response *params = work->params;
-	const struct rows *rows = &work->rows;
-	size_t count = 0;
-	while (count < rows->count &&
-	       series_latest(&rows->series, rows->first + count) <= work->mark->earliest_ns)
-		count++;
-	work->initial_count = count;
-	double initial_ms = (double)params->initial_ns / 1e6;
-	if (count < INITIAL_ROWS_LEAST) {
-		(void)snprintf(
-		    work->why, sizeof work->why,
-		    "only %zu samples of %s in the stimulus before the mark %s: hold %.4g ms before it",
-		    count, work->channel->name, work->mark->name, initial_ms);
-		return false;
-	}
-	int64_t to = rows->span.to_ns, judged = to - work->mark->latest_ns;
-	int64_t part = params->final_ns > 0 ? params->final_ns : judged / 5;
-	size_t begin = rows->count;
-	while (begin > count && series_earliest(&rows->series, rows->first + begin - 1) >= to - part)
-		begin--;
-	work->final_begin = begin;
-	if (rows->count - begin < FINAL_ROWS_LEAST) {
-		(void)snprintf(work->why, sizeof work->why,
-		               "only %zu samples of %s in the last %.4g ms: sample faster or hold longer",
-		               rows->count - begin, work->channel->name, (double)part / 1e6);
-		return false;
-	}
-	return true;
-}
-
-/* What is known of a mean over a steady stretch. */
-static void mean_budget(const struct work *work, const struct steadiness *steady,
-                        struct budget *ret_budget)
-{
-	*ret_budget = (struct budget){0};
-	double nu = steady->independent - 1;
-	budget_random(ret_budget, steady->noise / sqrt(steady->independent), nu);
-	/* A drift that noise does not explain: the value may go on by as much. */
-	double square = steady->drift * steady->drift - steady->drift_se * steady->drift_se;
-	budget_other(ret_budget, square > 0 ? sqrt(square / 3) : 0);
-	budget_other(ret_budget, rounding_bias(work->channel->resolution, steady->noise) / sqrt(3));
-}
-
-static double rated(const struct work *work)
-{
-	const struct machine *machine = work->in->machine;
-	const struct dimension dimension = work->channel->unit->dimension;
-	double value = (double)NAN;
-	if (dimension_agrees(dimension, DIM_SPEED_MECH))
-		value = machine->rated_speed.value;
-	else if (dimension_agrees(dimension, DIM_TORQUE))
-		value = machine->rated_torque.value;
-	else if (dimension_agrees(dimension, DIM_CURRENT_AMPLITUDE))
-		value = machine->rated_current.value;
-	else if (dimension_agrees(dimension, DIM_VOLTAGE))
-		value = machine->dc_voltage.value;
-	return value / work->channel->unit->scale;
-}
-
-/* Levels, step and noise, from stretches that may still prove unsteady. */
-static bool levels(struct work *work)
-{
-	const struct rows *rows = &work->rows;
-	double resolution = work->channel->resolution;
-	struct stretch before = rows_stretch(rows, 0, work->initial_count, work->origin_ns);
-	struct stretch after = rows_stretch(rows, work->final_begin, rows->count, work->origin_ns);
-	if (!steadiness_of(&before, resolution, &work->initial) ||
-	    !steadiness_of(&after, resolution, &work->final)) {
-		(void)snprintf(work->why, sizeof work->why, "the samples of %s all bear the same time",
-		               work->channel->name);
-		return false;
-	}
-	mean_budget(work, &work->initial, &work->initial_budget);
-	mean_budget(work, &work->final, &work->final_budget);
-	struct response *response = &work->response;
-	double initial_limit = rows_error_limit(rows, 0, work->initial_count);
-	work->final_limit = rows_error_limit(rows, work->final_begin, rows->count);
-	struct budget initial = work->initial_budget, final = work->final_budget;
-	budget_other(&initial, initial_limit / sqrt(3));
-	budget_other(&final, work->final_limit / sqrt(3));
-	double step = work->final.line.mean_y - work->initial.line.mean_y;
-	const struct steadiness *noisier =
-	    work->initial.noise > work->final.noise ? &work->initial : &work->final;
-	double rounding = resolution / sqrt(12);
-	bool rounded = noisier->noise < rounding;
-	*response = (struct response){
-	    .rows = rows_stretch(rows, 0, rows->count, work->origin_ns),
-	    .mark_half = (double)(work->mark->latest_ns - work->mark->earliest_ns) / 2e9,
-	    .direction = step > 0 ? 1 : -1,
-	    .initial = work->initial.line.mean_y,
-	    .initial_u = budget_expanded(&initial) / 2,
-	    .final = work->final.line.mean_y,
-	    .final_u = budget_expanded(&final) / 2,
-	    .noise = rounded ? rounding : noisier->noise,
-	    .nu = rounded ? (double)INFINITY : noisier->independent - 1,
-	    .independent = noisier->independent / (double)noisier->line.n,
-	    .resolution = resolution,
-	    .hundred = work->params->percent_of == OF_RATED ? rated(work) : fabs(step),
-	    .of_step = work->params->percent_of != OF_RATED,
-	    .error_limit = fmax(initial_limit, work->final_limit),
-	    .gap_most = rows_gap_limit(work->in, rows),
-	};
-	if (!(response->hundred >= 0)) {
-		(void)snprintf(work->why, sizeof work->why,
-		               "percent_of: rated, but the machine has no rated value for %s",
-		               work->channel->name);
-		return false;
-	}
-	return true;
-}
-
-/* The commanded value in the channel's unit; false with work->why. */
-static bool commanded(struct work *work, double *ret_value)
-{
-	const struct check_input *in = work->in;
-	const struct command *found = NULL;
-	for (size_t i = 0; i < in->command_count; i++) {
-		const struct command *command = &in->commands[i];
-		if (command->earliest_ns > work->mark->latest_ns)
-			continue;
-		bool at_mark = command->latest_ns >= work->mark->earliest_ns;
-		bool fits = dimension_agrees(in->channels[command->channel].unit->dimension,
-		                             work->channel->unit->dimension);
-		if (work->params->command >= 0 ? command->channel == work->params->command
-		                               : at_mark && fits)
-			found = command;
-	}
-	if (!found) {
-		(void)snprintf(work->why, sizeof work->why,
-		               "no command in the unit of %s is made at the mark %s: say command",
-		               work->channel->name, work->mark->name);
-		return false;
-	}
-	*ret_value =
-	    found->value * in->channels[found->channel].unit->scale / work->channel->unit->scale;
-	return true;
-}
-
-/* Whether the values moved by more than noise and errors explain; else work->why says so. */
-static bool moved(struct work *work)
-{
-	const struct response *response = &work->response;
-	double step = fabs(response->final - response->initial);
-	double doubt = 2 * hypot(response->initial_u, response->final_u);
-	if (step > 3 * doubt && step > 6 * response->noise)
-		return true;
-	(void)snprintf(
-	    work->why, sizeof work->why,
-	    "no step: %s went from %.4g to %.4g %s, and noise and errors leave +-%.2g in doubt",
-	    work->channel->name, response->initial, response->final, work->channel->unit->name,
-	    fmax(doubt, 2 * response->noise));
-	return false;
-}
-
-static bool steady(struct work *work, const struct steadiness *steadiness, const char *which)
-{
-	/* Where nothing moved, the step that was commanded says what matters. */
-	double target, hundred = work->response.hundred;
-	if (work->response.of_step && commanded(work, &target))
-		hundred = fmax(hundred, fabs(target - work->response.initial));
-	double tolerance = work->params->band * hundred;
-	if (steadiness->bound < tolerance / 4)
-		return true;
-	(void)snprintf(work->why, sizeof work->why,
-	               "the %s value of %s is not proven steady: over %.4g ms it may drift by %.3g %s, "
-	               "a quarter of the band (%.3g) would do; hold longer",
-	               which, work->channel->name, steadiness->duration * 1e3, steadiness->bound,
-	               work->channel->unit->name, tolerance / 4);
-	return false;
-}
-
 /* The final value drifts: whether the values also prove that nothing settled. */
-static void unsettled(struct work *work)
+static void unsettled(struct step_work *work)
 {
 	const struct response *response = &work->response;
 	double last = stretch_time(&response->rows, response->rows.count - 1);
@@ -446,14 +246,14 @@ static void unsettled(struct work *work)
 	put(work, SETTLING_TIME, &measured);
 }
 
-static void settled_part(struct work *work)
+static void settled_part(struct step_work *work)
 {
 	const struct rows *rows = &work->rows;
 	struct stretch stretch = rows_stretch(rows, work->final_begin, rows->count, work->origin_ns);
 	struct summary summary;
 	summarise(&stretch, &summary);
 	double target;
-	if (commanded(work, &target)) {
+	if (step_commanded(work, &target)) {
 		struct budget budget = work->final_budget;
 		budget_other(&budget, work->final_limit / sqrt(3));
 		double error = summary.mean - target, expanded = budget_expanded(&budget);
@@ -475,13 +275,13 @@ static void settled_part(struct work *work)
 }
 
 /* Whether samples are missing in [begin, end); then work->why says so. */
-static bool gap_in(struct work *work, size_t begin, size_t end)
+static bool gap_in(struct step_work *work, size_t begin, size_t end)
 {
 	return rows_gap_within(work->in, &work->rows, begin, end, INT64_MIN, work->why,
 	                       sizeof work->why);
 }
 
-static void shape(struct work *work)
+static void shape(struct step_work *work)
 {
 	const struct step_response *params = work->params;
 	struct measured measured[4];
@@ -503,24 +303,24 @@ static void shape(struct work *work)
 	put(work, SETTLING_TIME, &measured[3]);
 }
 
-static void judge(struct work *work)
+static void judge(struct step_work *work)
 {
-	if (!split(work) || !levels(work)) {
+	if (!step_split(work) || !step_levels(work)) {
 		all_unknown(work, work->why);
 		return;
 	}
-	if (!steady(work, &work->initial, "initial") || gap_in(work, 0, work->initial_count) ||
+	if (!step_steady(work, &work->initial, "initial") || gap_in(work, 0, work->initial_count) ||
 	    gap_in(work, work->final_begin, work->rows.count)) {
 		all_unknown(work, work->why);
 		return;
 	}
-	if (!steady(work, &work->final, "final")) {
+	if (!step_steady(work, &work->final, "final")) {
 		all_unknown(work, work->why);
 		if (!gap_in(work, work->initial_count - 1, work->rows.count))
 			unsettled(work);
 		return;
 	}
-	if (moved(work))
+	if (step_moved(work))
 		shape(work);
 	else
 		all_unknown(work, work->why);
@@ -531,7 +331,7 @@ static int evaluate(const struct check_input *in, const void *params, struct met
                     size_t *ret_count, struct err *reterr)
 {
 	const struct step_response *own = params;
-	struct work work = {
+	struct step_work work = {
 	    .in = in,
 	    .params = own,
 	    .channel = &in->channels[own->channel],
@@ -574,9 +374,7 @@ static int verify(const void *params, const struct channel_info *channels,
 		return err_set(reterr, ERR_FILE, "rise_time: from must be below to");
 	if (own->for_ns > 0 && own->final_ns >= own->for_ns)
 		return err_set(reterr, ERR_FILE, "final_for must be shorter than for");
-	struct check_input in = {.machine = machine};
-	struct work work = {.in = &in, .channel = channel};
-	if (own->percent_of == OF_RATED && !(rated(&work) > 0))
+	if (own->percent_of == OF_RATED && !(step_rated(machine, channel) > 0))
 		return err_set(reterr, ERR_FILE,
 		               "percent_of: rated, but the machine has no rated value for %s",
 		               channel->name);
