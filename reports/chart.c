@@ -180,7 +180,7 @@ static void value_range(const struct chart *chart, size_t panel, double *ret_low
 	const struct series *series = &chart->test->series[chart->channels[panel]];
 	const struct recorded_test *recorded = chart->test->recorded;
 	const struct channel_info *info = &chart->rig->infos[chart->channels[panel]];
-	double low = INFINITY, high = -INFINITY;
+	double low = (double)INFINITY, high = -(double)INFINITY;
 	for (size_t row = series_first_at(series, chart->t0_ns); row < series->rows; row++) {
 		if (series_sent(series, row) > chart->t1_ns)
 			break;

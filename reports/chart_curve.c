@@ -104,7 +104,7 @@ void chart_curve(struct xml_out *out, const struct series *series, const struct 
 {
 	struct pen pen = {.out = out, .stroke = "#1f4e6b"};
 	struct column column = {0};
-	double wraps = series->channel->wraps, last_value = NAN;
+	double wraps = series->channel->wraps, last_value = (double)NAN;
 	/* A code does not pass through the codes between: it holds until the next sample. */
 	bool stepped = series->channel->name_count > 0;
 	int64_t last_ns = 0;

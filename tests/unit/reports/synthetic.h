@@ -162,9 +162,10 @@ static inline void syn_test(struct synthetic *s, struct test *test, const char *
 	                                     .device = 0,
 	                                     .expected_exception = 3}};
 	*params = (struct syn_params){.channel = SYN_SPEED, .from = 0, .window = {-1, 0, 0}};
-	limits[0] = (struct limit){.metric = 0, .min = -INFINITY, .max = 0.3};
+	limits[0] = (struct limit){.metric = 0, .min = -(double)INFINITY, .max = 0.3};
 	limits[1] = (struct limit){.metric = 1, .min = 1490, .max = 1510};
-	limits[2] = (struct limit){.metric = 2, .min = -INFINITY, .max = 12, .requirement = "SRS-113"};
+	limits[2] =
+	    (struct limit){.metric = 2, .min = -(double)INFINITY, .max = 12, .requirement = "SRS-113"};
 	limits[3] = (struct limit){.metric = 3, .min = 1, .max = 1};
 	*check = (struct check_use){.kind = &SYN_KIND,
 	                            .name = "invented",
@@ -278,7 +279,10 @@ static inline void syn_judge(struct synthetic *s, struct test_result *result, en
 	     .low = overshoot - 0.4,
 	     .high = overshoot + 0.4,
 	     .unit = unit_percent()},
-	    {.value = NAN, .low = -INFINITY, .high = INFINITY, .unit = unit_one()},
+	    {.value = (double)NAN,
+	     .low = -(double)INFINITY,
+	     .high = (double)INFINITY,
+	     .unit = unit_one()},
 	};
 	int64_t from = result->recorded->marks[0].earliest_ns;
 	for (int i = 0; i < 4; i++) {
@@ -457,7 +461,7 @@ static inline int syn_write_test(const struct synthetic *s, const struct run_fol
 	mark.latest_ns = recorded->marks[0].latest_ns;
 	(void)snprintf(mark.name, sizeof mark.name, "%s", recorded->marks[0].name);
 	rc |= journal_write(journal, &mark, err);
-	attempt.status = recorded->outcomes[0].status;
+	attempt.status = (int)recorded->outcomes[0].status;
 	attempt.number = recorded->outcomes[0].exception;
 	attempt.expected = recorded->outcomes[0].expected_exception;
 	attempt.earliest_ns = recorded->outcomes[0].sent_ns;
@@ -474,7 +478,7 @@ static inline int syn_write_test(const struct synthetic *s, const struct run_fol
 		rc |= journal_write(journal, &expired, err);
 	}
 	rc |= journal_write(journal, &over, err);
-	end.status = recorded->end;
+	end.status = (int)recorded->end;
 	end.number = (int)recorded->missed_slots;
 	end.expected = (int)recorded->lost_replies;
 	return rc | journal_write(journal, &end, err);

@@ -20,10 +20,10 @@ static void a_number_has_two_digits_of_its_uncertainty(void **state)
 	    {1500, 0.5, "1500.00"},
 	    {-0.001, 0.5, "0.00"},
 	    {-0.004, 2.2, "0.0"},
-	    {NAN, 1, "unknown"},
-	    {INFINITY, 1, "unbounded"},
-	    {12.5, INFINITY, "12.5"},
-	    {12.5, NAN, "12.5"},
+	    {(double)NAN, 1, "unknown"},
+	    {(double)INFINITY, 1, "unbounded"},
+	    {12.5, (double)INFINITY, "12.5"},
+	    {12.5, (double)NAN, "12.5"},
 	    {1e20, 1, "1e+20"},
 	    {0.123456789, 1e-20, "0.123456789000"},
 	};
@@ -41,7 +41,7 @@ static void a_metric_is_shown_in_the_unit_of_its_limit(void **state)
 	static const struct metric_kind share = {.name = "overshoot", .shape = METRIC_PERCENT};
 	static const struct metric_kind right = {.name = "code_right", .shape = METRIC_YES_NO};
 	const struct unit *s = unit_find("s", 1), *ms = unit_find("ms", 2), *rpm = unit_find("rpm", 3);
-	const double none = INFINITY;
+	const double none = (double)INFINITY;
 	const struct {
 		struct metric metric;
 		struct limit limit;

@@ -173,7 +173,7 @@ static void a_long_record_keeps_its_extremes_in_the_picture(void **state)
 	/* Of the panel (y from 26 to 176) 8 % of the range are left free above and below. */
 	const char *line = strstr(html, "stroke=\"#1f4e6b\"");
 	assert_non_null(line);
-	double least = INFINITY, most = -INFINITY;
+	double least = (double)INFINITY, most = -(double)INFINITY;
 	for (const char *at = html; (at = strstr(at, "points=\"")); at++) {
 		const char *point = at + 8;
 		while (*point != '"') {
