@@ -274,11 +274,11 @@ static void settled_part(struct step_work *work)
 	          0.95);
 }
 
-/* Whether samples are missing in [begin, end); then work->why says so. */
+/* Whether samples are missing in [begin, end), or at the end of what is judged. */
 static bool gap_in(struct step_work *work, size_t begin, size_t end)
 {
-	return rows_gap_within(work->in, &work->rows, begin, end, INT64_MIN, work->why,
-	                       sizeof work->why);
+	int64_t to = end == work->rows.count ? work->rows.span.to_ns : INT64_MIN;
+	return rows_gap_within(work->in, &work->rows, begin, end, to, work->why, sizeof work->why);
 }
 
 static void shape(struct step_work *work)
