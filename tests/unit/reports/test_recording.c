@@ -198,6 +198,44 @@ static void the_condition_is_found_in_the_suite_where_the_event_does_not_tell_it
 	release(&run);
 }
 
+/* A journal of one test with one command whose times are reversed. */
+static int open_with_command(const char *name, int status, struct err *err)
+{
+	struct recorded_run run = {0};
+	struct journal *journal;
+	synthetic_make(&run.made, "", "");
+	arena_init(&run.arena, 0);
+	assert_int_equal(run_folder_new(scratch_path(name), "", "bench", &run.folder, NULL), 0);
+	assert_int_equal(journal_new(&run.folder, &run.made.rig, run.made.suites, 1, &journal, NULL),
+	                 0);
+	assert_int_equal(journal_begin(journal, &run.made.run.facts, NULL), 0);
+	struct journal_event events[3] = {syn_event(JOURNAL_TEST_BEGIN, 1, 0),
+	                                  syn_event(JOURNAL_STIMULUS, 2, 0),
+	                                  syn_event(JOURNAL_COMMAND, 3, 0)};
+	events[2].channel = SYN_COMMAND;
+	events[2].value = 1500;
+	events[2].earliest_ns = 9;
+	events[2].status = status;
+	for (int i = 0; i < 3; i++)
+		assert_int_equal(journal_write(journal, &events[i], NULL), 0);
+	assert_int_equal(journal_close(journal, NULL), 0);
+	int rc = reopen(&run, err);
+	if (rc == 0)
+		assert_int_equal(run.recording.tests[0][0]->command_count, 0);
+	release(&run);
+	return rc;
+}
+
+static void a_command_that_failed_is_none_whatever_its_times(void **state)
+{
+	(void)state;
+	struct err err = {0};
+	assert_int_equal(open_with_command("failed", 1, &err), 0);
+	assert_int_equal(open_with_command("done", 0, &err), -1);
+	assert_int_equal(err.code, ERR_FILE);
+	assert_non_null(strstr(err.message, "without its times"));
+}
+
 static void a_journal_cut_at_any_byte_is_read_and_said_to_be_cut(void **state)
 {
 	(void)state;
@@ -402,6 +440,7 @@ int main(void)
 	    cmocka_unit_test(a_test_is_found_by_name_in_a_newer_suite),
 	    cmocka_unit_test(an_attempt_that_was_not_made_is_told),
 	    cmocka_unit_test(the_condition_is_found_in_the_suite_where_the_event_does_not_tell_it),
+	    cmocka_unit_test(a_command_that_failed_is_none_whatever_its_times),
 	    cmocka_unit_test(a_journal_cut_at_any_byte_is_read_and_said_to_be_cut),
 	    cmocka_unit_test(a_spoilt_journal_is_refused_with_its_line),
 	    cmocka_unit_test(a_sealed_folder_that_was_changed_is_refused),
