@@ -43,7 +43,7 @@ static void put16(uint8_t *at, unsigned value)
 
 static void get_words(const uint8_t *at, unsigned count, uint16_t *words)
 {
-	for (unsigned i = 0; i < count; i++)
+	for (size_t i = 0; i < count; i++)
 		words[i] = (uint16_t)get16(at + 2 * i);
 }
 
@@ -97,7 +97,7 @@ static int put_registers(struct exchange *x, enum place place, unsigned address,
 	if (answer != 0)
 		return answer;
 	x->reply[1] = (uint8_t)(2 * count);
-	for (unsigned i = 0; i < count; i++)
+	for (size_t i = 0; i < count; i++)
 		put16(x->reply + 2 + 2 * i, words[i]);
 	x->reply_length = 2 + 2 * count;
 	return 0;

@@ -55,9 +55,8 @@ static unsigned most_of(enum link_function function)
 		return LINK_BITS_MOST;
 	case LINK_READ_HOLDING_REGISTERS:
 	case LINK_READ_INPUT_REGISTERS:
+	case LINK_WRITE_COILS: /* as many as a request has words for */
 		return LINK_REGISTERS_MOST;
-	case LINK_WRITE_COILS:
-		return LINK_REGISTERS_MOST; /* as many as a request has words for */
 	case LINK_WRITE_REGISTERS:
 		return LINK_WRITE_REGISTERS_MOST;
 	default:
@@ -128,7 +127,7 @@ int pdu_build(const struct link_request *request, uint8_t *pdu, struct err *rete
 		return build_coils(request, pdu, reterr);
 	case LINK_WRITE_REGISTERS:
 		pdu[5] = (uint8_t)(2 * request->count);
-		for (unsigned i = 0; i < request->count; i++)
+		for (size_t i = 0; i < request->count; i++)
 			put16(pdu + 6 + 2 * i, request->words[i]);
 		return 6 + 2 * request->count;
 	case LINK_MASK_WRITE:
@@ -170,7 +169,7 @@ static void parse_registers(const struct link_request *request, const uint8_t *p
 		          request->count);
 		return;
 	}
-	for (unsigned i = 0; i < request->count; i++)
+	for (size_t i = 0; i < request->count; i++)
 		reply->words[i] = (uint16_t)get16(pdu + 2 + 2 * i);
 	reply->count = request->count;
 	reply->status = LINK_OK;

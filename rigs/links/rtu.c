@@ -236,12 +236,12 @@ static enum link_status timed_out(const struct rtu_link *rtu, struct link_reply 
 	int function = (int)rtu->request.function;
 	int64_t needed_ns = timing_request_ns(&rtu->timing, function, rtu->request.count) +
 	                    timing_reply_ns(&rtu->timing, function, rtu->request.count);
-	long long timeout_ms = (long long)(rtu->timeout_ns / 1000000);
+	long long timeout_ms = (long long)rtu->timeout_ns / 1000000;
 	if (needed_ns > rtu->timeout_ns)
 		return reply_set(reply, LINK_TIMEOUT,
 		                 "%.40s, unit %u: no reply within %lld ms; at %d baud it takes %lld ms",
 		                 rtu->link.address, rtu->request.unit, timeout_ms, rtu->timing.baud,
-		                 (long long)(needed_ns / 1000000 + 1));
+		                 (long long)needed_ns / 1000000 + 1);
 	return reply_set(reply, LINK_TIMEOUT, "%.60s, unit %u: no reply within %lld ms%s",
 	                 rtu->link.address, rtu->request.unit, timeout_ms,
 	                 rtu->frame_length ? " (it had begun)" : "");

@@ -233,7 +233,7 @@ static enum link_status send_request(struct tcp_link *tcp, int64_t deadline_ns,
 {
 	uint8_t adu[ADU_MOST];
 	int length = pdu_build(&tcp->request, adu + MBAP_BYTES, NULL);
-	size_t total = (size_t)(MBAP_BYTES + length), sent = 0;
+	size_t total = MBAP_BYTES + (size_t)length, sent = 0;
 
 	tcp->transaction++;
 	adu[0] = (uint8_t)(tcp->transaction >> 8);
@@ -276,7 +276,7 @@ static bool take_frame(struct tcp_link *tcp, struct link_reply *reply)
 			reply_set(reply, LINK_GARBLED, "unit %u answered for unit %u", at[6],
 			          tcp->request.unit);
 		else
-			pdu_parse(&tcp->request, at + MBAP_BYTES, (size_t)(length - MBAP_BYTES), reply);
+			pdu_parse(&tcp->request, at + MBAP_BYTES, (size_t)length - MBAP_BYTES, reply);
 		drop_head(tcp, (size_t)length);
 		return true;
 	}
