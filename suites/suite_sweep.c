@@ -30,7 +30,7 @@ static bool sweep_key_load(struct loading *l, const struct yaml_pair *pair,
 		faults_add(l->faults, pair->value->at, "a sweep of nothing: give at least one value");
 		return false;
 	}
-	ret_key->items = arena_array(l->arena, count, sizeof *ret_key->items);
+	ret_key->items = arena_array(l->arena, count, sizeof(void *));
 	ret_key->shown = arena_array(l->arena, count, sizeof *ret_key->shown);
 	if (!ret_key->items || !ret_key->shown)
 		return loading_no_memory(l) != NULL;

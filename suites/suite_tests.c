@@ -131,7 +131,7 @@ static void sample_of(struct loading *l, const struct yaml_node *node, struct te
 		l->sample_known = false;
 	}
 	memset(l->sampled, 0, l->rig->channel_count);
-	for (size_t g = 0; g < test->group_count; g++)
+	for (size_t g = 0; test->groups && g < test->group_count; g++)
 		for (size_t c = 0; c < test->groups[g].channel_count; c++)
 			l->sampled[test->groups[g].channels[c]] = 1;
 }
