@@ -14,6 +14,8 @@ static const struct verb {
     {"run", "--rig RIG SUITE...", "drive the bench, judge, write the run folder", verb_run},
     {"rehearse", "--rig RIG SUITE...", "the same on the modelled bench, in virtual time",
      verb_rehearse},
+    {"plan", "--rig RIG SUITE...", "touch nothing: how long, how often, which limits can be decided",
+     verb_plan},
     {"survey", "--rig RIG", "look at a bench, command nothing: identity, values, times", verb_survey},
     {"serve", "--rig RIG", "the modelled bench as Modbus servers, in real time", verb_serve},
     {"report", "DIR --out NEW", "rebuild every report from a recorded run, or --verify it",

@@ -113,8 +113,8 @@ static void measure(const struct survey *survey, int device, struct timing *timi
 		jitter = spread > jitter ? spread : jitter;
 	}
 	double spread = fit.n * fit.xx - fit.x * fit.x;
-	double share = spread > 0 ? (fit.n * fit.xy - fit.x * fit.y) / spread
-	                          : (double)timing->per_register_ns;
+	double share =
+	    spread > 0 ? (fit.n * fit.xy - fit.x * fit.y) / spread : (double)timing->per_register_ns;
 	share = fmax(share, 0);
 	timing->per_register_ns = llround(share);
 	timing->turnaround_ns = llround(fmax((fit.y - share * fit.x) / fit.n, 0));
@@ -251,9 +251,9 @@ int bench_timing_load(const char *path, struct bench_timing *timing, struct err 
 		                    "this is no timing of format %d, as `survey --record` writes it",
 		                    TIMING_VERSION);
 	else if (strcmp(rig, timing->rig->name) != 0)
-		result = err_set_at(reterr, ERR_FILE, path, 0, 0,
-		                    "this is the timing of the rig %s, and not of %s", rig,
-		                    timing->rig->name);
+		result =
+		    err_set_at(reterr, ERR_FILE, path, 0, 0,
+		               "this is the timing of the rig %s, and not of %s", rig, timing->rig->name);
 	else
 		(void)snprintf(timing->taken, sizeof timing->taken, "%s", taken);
 	json_array_foreach(json_object_get(root, "links"), i, link)

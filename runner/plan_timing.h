@@ -30,7 +30,8 @@ int bench_timing_load(const char *path, struct bench_timing *timing, struct err 
 /* Writes what a survey measured. Errors: ERR_OUTPUT, ERR_NOMEM. */
 int bench_timing_record(const char *path, const struct survey *survey, struct err *reterr);
 
-/* From the request to the reply as a row shows them, usual and at most (19 of 20 where measured). */
+/* From the request to the reply as a row shows them, usual and at most (19 of 20 where measured).
+ */
 void bench_timing_row(const struct bench_timing *timing, int device, int function, int count,
                       int64_t *ret_usual, int64_t *ret_most);
 /* The same up to when the next request can go out. */

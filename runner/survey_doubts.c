@@ -116,17 +116,15 @@ static size_t doubt_order(const struct rig *rig, int index, const struct survey_
 	(void)channel_value_text(rig, index, value, is, sizeof is);
 	double words = other_order(channel, state, true, false);
 	if (wrong && registers > 1 && sane(span, words) && fabs(words) < 1e9) {
-		text_printf(out,
-		            "  ? %s is %s as the rig file reads it; with `words: %s` it would be %s\n", name,
-		            is, order_name(!channel->codec.low_word_first),
+		text_printf(out, "  ? %s is %s as the rig file reads it; with `words: %s` it would be %s\n",
+		            name, is, order_name(!channel->codec.low_word_first),
 		            channel_value_text(rig, index, words, other, sizeof other));
 		return 1;
 	}
 	double bytes = other_order(channel, state, false, true);
 	if (wrong && sane(span, bytes)) {
-		text_printf(out,
-		            "  ? %s is %s as the rig file reads it; with `bytes: %s` it would be %s\n", name,
-		            is, order_name(!channel->codec.low_byte_first),
+		text_printf(out, "  ? %s is %s as the rig file reads it; with `bytes: %s` it would be %s\n",
+		            name, is, order_name(!channel->codec.low_byte_first),
 		            channel_value_text(rig, index, bytes, other, sizeof other));
 		return 1;
 	}
@@ -151,9 +149,10 @@ static size_t doubt_range(const struct rig *rig, int index, double value, const 
 			(void)snprintf(hint, sizeof hint, "; with a scale %g times as large it would fit",
 			               FACTORS[i]);
 	}
-	text_printf(out, "  ? %s is %s, outside what %s says (%s to %s): wrong scale, type or address%s\n",
-	            channel->info.name, channel_value_text(rig, index, value, is, sizeof is), span->what,
-	            channel_value_text(rig, index, span->least, least, sizeof least),
+	text_printf(out,
+	            "  ? %s is %s, outside what %s says (%s to %s): wrong scale, type or address%s\n",
+	            channel->info.name, channel_value_text(rig, index, value, is, sizeof is),
+	            span->what, channel_value_text(rig, index, span->least, least, sizeof least),
 	            channel_value_text(rig, index, span->most, most, sizeof most), hint);
 	return 1;
 }
@@ -196,9 +195,9 @@ static size_t doubt_life(const struct survey *survey, int device, struct text *o
 	const struct survey_channel *life = &survey->channel[rig_device->life];
 	if (!life->asked || life->status != LINK_OK || life->reads < 2 || life->changes > 0)
 		return 0;
-	text_printf(out,
-	            "  ? %s, the life counter of %s, stood over %zu reads: its registers may be frozen\n",
-	            survey->rig->infos[rig_device->life].name, rig_device->name, life->reads);
+	text_printf(
+	    out, "  ? %s, the life counter of %s, stood over %zu reads: its registers may be frozen\n",
+	    survey->rig->infos[rig_device->life].name, rig_device->name, life->reads);
 	return 1;
 }
 
@@ -211,7 +210,8 @@ static size_t doubt_refresh(const struct survey *survey, int index, struct text 
 	int64_t change = survey_change_ns(survey, index, &faster);
 	if (change == 0 || faster || change <= info->refresh_ns + info->refresh_ns / 4 + NS_PER_MS / 10)
 		return 0;
-	text_printf(out, "  ? %s changes every %s, so its value may be as old; the rig file says %s%s\n",
+	text_printf(out,
+	            "  ? %s changes every %s, so its value may be as old; the rig file says %s%s\n",
 	            info->name, duration_text(change, seen, sizeof seen),
 	            info->refresh_ns ? "refresh: " : "nothing of its refresh",
 	            info->refresh_ns ? duration_text(info->refresh_ns, said, sizeof said) : "");
@@ -260,7 +260,8 @@ const char *survey_exception_hint(int exception)
 	case 1:
 		return "the device does not know this function: try the other kind of register or bit";
 	case 2:
-		return "no such address, or it ends before this value: a manual that counts from 1, or from "
+		return "no such address, or it ends before this value: a manual that counts from 1, or "
+		       "from "
 		       "30001 or 40001, means one less here";
 	case 3:
 		return "it does not give as many registers at once, or only whole values: look at type, "

@@ -6,8 +6,8 @@
 #include <stdio.h>
 #include <string.h>
 
-static const char *const PLACES[] = {"coil", "discrete input", "input register", "holding register",
-                                     "identification", "derived"};
+static const char *const PLACES[] = {
+    "coil", "discrete input", "input register", "holding register", "identification", "derived"};
 
 static int widest_name(const struct rig *rig)
 {
@@ -59,8 +59,7 @@ static void show_value(const struct survey *survey, int index, struct text *out)
 	else if (isnan(value))
 		text_puts(out, "no value");
 	else
-		text_puts(out,
-		          channel_value_text(survey->rig, index, value, buffer, sizeof buffer));
+		text_puts(out, channel_value_text(survey->rig, index, value, buffer, sizeof buffer));
 }
 
 static void show_channel(const struct survey *survey, int index, int width, struct text *out)

@@ -161,7 +161,8 @@ static int carry_out(const struct survey_options *options)
 	if (!session)
 		return EXIT_INTERNAL;
 	session_init(session, options->run);
-	if (rig_load(options->run->rig_path, &session->arena, &session->faults, &session->rig, &err) < 0)
+	if (rig_load(options->run->rig_path, &session->arena, &session->faults, &session->rig, &err) <
+	    0)
 		code = session_exit_of(&err);
 	else if (!session->rig)
 		code = session_print_faults(&session->faults);

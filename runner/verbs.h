@@ -7,6 +7,7 @@
  */
 int verb_run(int argc, char **argv);
 int verb_rehearse(int argc, char **argv);
+int verb_plan(int argc, char **argv);
 int verb_survey(int argc, char **argv);
 int verb_serve(int argc, char **argv);
 int verb_report(int argc, char **argv);
