@@ -13,12 +13,13 @@
 #include <sys/stat.h>
 #include <unistd.h>
 
-static char scratch[64];
+static char scratch[300];
 
 static inline int scratch_make(void **state)
 {
 	(void)state;
-	(void)snprintf(scratch, sizeof scratch, "/tmp/drivetrial-test-XXXXXX");
+	const char *top = getenv("TMPDIR");
+	(void)snprintf(scratch, sizeof scratch, "%.200s/drivetrial-test-XXXXXX", top ? top : P_tmpdir);
 	return mkdtemp(scratch) ? 0 : -1;
 }
 
