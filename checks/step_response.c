@@ -303,24 +303,28 @@ static void shape(struct step_work *work)
 	put(work, SETTLING_TIME, &measured[3]);
 }
 
+/*
+ * The final value and what hangs on it alone need no steady initial value;
+ * everything else needs both.
+ */
 static void judge(struct step_work *work)
 {
-	if (!step_split(work) || !step_levels(work)) {
+	size_t count = work->rows.count;
+	if (!step_split(work) || !step_levels(work) || gap_in(work, work->final_begin, count)) {
 		all_unknown(work, work->why);
 		return;
 	}
-	if (!step_steady(work, &work->initial, "initial") || gap_in(work, 0, work->initial_count) ||
-	    gap_in(work, work->final_begin, work->rows.count)) {
+	bool begun =
+	    step_steady(work, &work->initial, "initial") && !gap_in(work, 0, work->initial_count);
+	if (!begun)
 		all_unknown(work, work->why);
-		return;
-	}
 	if (!step_steady(work, &work->final, "final")) {
 		all_unknown(work, work->why);
-		if (!gap_in(work, work->initial_count - 1, work->rows.count))
+		if (begun && !gap_in(work, work->initial_count - 1, count))
 			unsettled(work);
 		return;
 	}
-	if (step_moved(work))
+	if (begun && step_moved(work))
 		shape(work);
 	else
 		all_unknown(work, work->why);

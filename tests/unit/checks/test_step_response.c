@@ -203,6 +203,21 @@ static void a_drive_that_does_not_move_has_an_error_and_no_shape(void **state)
 	recording_release(&bench.rec);
 }
 
+static void an_unsteady_begin_leaves_the_final_value_known(void **state)
+{
+	(void)state;
+	struct bench bench;
+	bench_init(&bench);
+	play(&bench, &usual);
+	struct recorded_row *rows = bench.rec.rows[bench.speed];
+	for (size_t i = 0; i < 100; i++)
+		rows[i].value += 0.5 * (double)i; /* still on its way when the step comes */
+	assert_unknown(run(&bench, "rise_time"), "the initial value of speed is not proven steady");
+	assert_unknown(check_metric(&bench.use, "settling_time"), "initial");
+	assert_known(check_metric(&bench.use, "steady_state_error"));
+	recording_release(&bench.rec);
+}
+
 static void short_and_missing_data_are_inconclusive(void **state)
 {
 	(void)state;
@@ -366,6 +381,7 @@ int main(void)
 	    cmocka_unit_test(what_never_settles_fails_settling_and_leaves_the_rest_open),
 	    cmocka_unit_test(fast_oscillation_around_a_steady_mean_never_settles),
 	    cmocka_unit_test(a_drive_that_does_not_move_has_an_error_and_no_shape),
+	    cmocka_unit_test(an_unsteady_begin_leaves_the_final_value_known),
 	    cmocka_unit_test(short_and_missing_data_are_inconclusive),
 	    cmocka_unit_test(gaps_matter_where_the_answer_lies),
 	    cmocka_unit_test(disorder_frozen_and_bad_rows_never_pass),
