@@ -3,7 +3,7 @@
 #define DRIVETRIAL_SESSION_H
 /*
  * One run from the command line to the reports: what `run` and `rehearse`
- * share. The two differ in links and clock only: libmodbus and
+ * share. The two differ in links and clock only: sockets and serial lines with
  * CLOCK_MONOTONIC, or the modelled bench and a number.
  *
  *   session_load      files, selection, demands of an unattended run
