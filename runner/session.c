@@ -312,20 +312,30 @@ static int make_served(struct session *session, struct err *err)
 	                  &session->served, err);
 }
 
-/* One request, waited for; before the workers start. */
-static int transact(struct session *session, struct link *link, const struct link_request *request,
-                    struct link_reply *reply, struct err *err)
+static void exchange(struct session *session, struct link *link, struct link_reply *reply)
 {
 	int64_t now = clock_now(&session->clock), due;
-	if (link_begin(link, request, now, err) < 0)
-		return -1;
 	while ((due = link_end(link, now, reply)) > now) {
 		if (session->options->rehearse)
 			session->virtual_clock.now_ns = due + session->origin_ns;
 		now = session->options->rehearse ? due : clock_now(&session->clock);
 	}
-	if (reply->status == LINK_OK)
-		return 0;
+}
+
+/*
+ * One read, waited for; before the workers start. It may be repeated without
+ * harm, so that one lost reply does not cost a night's run.
+ */
+static int transact(struct session *session, struct link *link, const struct link_request *request,
+                    struct link_reply *reply, struct err *err)
+{
+	for (int times = 0; times < 4; times++) {
+		if (link_begin(link, request, clock_now(&session->clock), err) < 0)
+			return -1;
+		exchange(session, link, reply);
+		if (reply->status == LINK_OK)
+			return 0;
+	}
 	if (reply->status == LINK_EXCEPTION)
 		return err_set(err, ERR_LINK, "exception %d (%s)", reply->exception,
 		               modbus_exception_name(reply->exception));
