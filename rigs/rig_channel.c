@@ -240,6 +240,12 @@ static bool is_reserved(const char *name)
 	return strcmp(name, "over") == 0 || strcmp(name, "wait") == 0 || strcmp(name, "none") == 0;
 }
 
+/* Columns that every samples file has. */
+static bool is_column(const char *name)
+{
+	return strcmp(name, "earliest") == 0 || strcmp(name, "latest") == 0;
+}
+
 static int load_channel(struct rig_loader *loader, const struct yaml_pair *pair,
                         struct rig_channel *channel)
 {
@@ -251,6 +257,10 @@ static int load_channel(struct rig_loader *loader, const struct yaml_pair *pair,
 		channel->derivation.inputs[i] = -1;
 	if (is_reserved(channel->info.name))
 		rig_fault(loader, pair->key, "a channel cannot be called '%s': steps use the word",
+		          channel->info.name);
+	if (is_column(channel->info.name))
+		rig_fault(loader, pair->key,
+		          "a channel cannot be called '%s': the samples file has a column of that name",
 		          channel->info.name);
 	if (!bind_expect(&loader->binder, pair->value, YAML_MAPPING, "a channel"))
 		return 0;
