@@ -390,20 +390,19 @@ class RtuProxy:
         self.request, self.fate = frame, None
         if self.dead():
             return
-        self.fate = self.dice.fate()
-        if self.fate == "drop_request":
+        fate = self.dice.fate()
+        if fate == "drop_request":
             return
-        if self.fate == "spoil_request":
-            frame = self.spoil(frame)
-        elif self.fate in EXCEPTIONS:
-            code = int(self.fate.split("_")[1])
-            data = bytes([frame[0], frame[1] | 0x80, code])
+        if fate in EXCEPTIONS:
+            data = bytes([frame[0], frame[1] | 0x80, int(fate.split("_")[1])])
             self.later(0, data + checksum(data))
-            return
-        elif self.fate == "silence":
+        elif fate == "silence":
             self.dead_until = time.monotonic() + self.timeout * self.dice.between(1, 4)
-            return
-        os.write(self.server, frame)
+        elif fate == "spoil_request":
+            os.write(self.server, self.spoil(frame))
+        else:
+            self.fate = fate
+            os.write(self.server, frame)
 
     def spoil(self, frame):
         """One to three bits, which the checksum always sees within a frame of this length."""
@@ -414,7 +413,7 @@ class RtuProxy:
 
     def on_reply(self, frame):
         fate, self.fate = self.fate, None
-        if fate in (None, "spoil_request"):
+        if fate is None:
             self.later(0, frame)
         elif fate != "drop_reply":
             getattr(self, fate)(frame)
