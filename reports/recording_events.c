@@ -162,6 +162,55 @@ static int on_nothing(struct reading *reading, struct event *event, struct err *
 	return 0;
 }
 
+/* Keeps what a reader of the report should know; equal events are counted. */
+static int keep_event(struct reading *reading, const struct event *event, enum run_event_kind kind,
+                      const char *where, const char *text, struct err *reterr)
+{
+	struct run_facts *facts = &reading->recording->facts;
+	where = where ? where : "";
+	text = text ? text : "";
+	for (size_t i = 0; i < facts->event_count; i++) {
+		struct run_event *one = &facts->events[i];
+		if (one->kind != kind || strcmp(one->where, where) != 0 || strcmp(one->text, text) != 0)
+			continue;
+		one->count++;
+		one->last_ns = event->time_ns;
+		return 0;
+	}
+	if (facts->event_count == RUN_EVENTS_MOST) {
+		facts->events_left_out++;
+		return 0;
+	}
+	if (!GROW(reading, facts->events, facts->event_count, &reading->event_room))
+		return reading_no_memory(reterr);
+	struct run_event *one = &facts->events[facts->event_count++];
+	*one = (struct run_event){.kind = kind,
+	                          .where = arena_strdup(reading->arena, where),
+	                          .text = arena_strdup(reading->arena, text),
+	                          .first_ns = event->time_ns,
+	                          .last_ns = event->time_ns,
+	                          .count = 1};
+	return one->where && one->text ? 0 : reading_no_memory(reterr);
+}
+
+static int on_link(struct reading *reading, struct event *event, struct err *reterr)
+{
+	return keep_event(reading, event, RUN_EVENT_LINK, reading_text(event->line, "link"),
+	                  reading_text(event->line, "text"), reterr);
+}
+
+static int on_interlock(struct reading *reading, struct event *event, struct err *reterr)
+{
+	return keep_event(reading, event, RUN_EVENT_INTERLOCK, reading_text(event->line, "channel"),
+	                  reading_text(event->line, "text"), reterr);
+}
+
+static int on_note(struct reading *reading, struct event *event, struct err *reterr)
+{
+	return keep_event(reading, event, RUN_EVENT_NOTE, NULL, reading_text(event->line, "text"),
+	                  reterr);
+}
+
 static int on_second_begin(struct reading *reading, struct event *event, struct err *reterr)
 {
 	(void)event;
@@ -229,10 +278,12 @@ static int on_rest_begin(struct reading *reading, struct event *event, struct er
 static int on_rest(struct reading *reading, struct event *event, struct err *reterr)
 {
 	struct run_facts *facts = &reading->recording->facts;
-	(void)reterr;
 	facts->rest_was_needed = true;
 	facts->rest_confirmed = json_is_true(json_object_get(event->line, "confirmed"));
 	reading_copy(facts->rest_reason, sizeof facts->rest_reason, reading_text(event->line, "text"));
+	if (!facts->rest_confirmed)
+		return keep_event(reading, event, RUN_EVENT_REST, NULL, reading_text(event->line, "text"),
+		                  reterr);
 	return 0;
 }
 
@@ -267,15 +318,15 @@ static const struct {
     [JOURNAL_PRECONDITION] = {on_condition, NEEDS_BEGUN_TEST},
     [JOURNAL_STIMULUS_END] = {on_stimulus_end, NEEDS_BEGUN_TEST},
     [JOURNAL_TEST_END] = {on_test_end, NEEDS_BEGUN_TEST},
-    [JOURNAL_LINK] = {on_nothing, NEEDS_NOTHING},
-    [JOURNAL_INTERLOCK] = {on_nothing, NEEDS_NOTHING},
+    [JOURNAL_LINK] = {on_link, NEEDS_NOTHING},
+    [JOURNAL_INTERLOCK] = {on_interlock, NEEDS_NOTHING},
     [JOURNAL_ABORT] = {on_abort, NEEDS_NOTHING},
     [JOURNAL_REST_BEGIN] = {on_rest_begin, NEEDS_NOTHING},
     [JOURNAL_REST] = {on_rest, NEEDS_NOTHING},
     [JOURNAL_LINK_COUNTS] = {on_link_counts, NEEDS_NOTHING},
     [JOURNAL_HEARTBEAT] = {on_nothing, NEEDS_NOTHING},
     [JOURNAL_RUN_END] = {on_run_end, NEEDS_NOTHING},
-    [JOURNAL_NOTE] = {on_nothing, NEEDS_NOTHING},
+    [JOURNAL_NOTE] = {on_note, NEEDS_NOTHING},
 };
 
 static bool is_test(const struct reading *reading, size_t suite, size_t test,

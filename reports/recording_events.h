@@ -27,7 +27,7 @@ struct reading {
 	char *line;
 	int number;                      /* of the line, 1-based */
 	size_t last_suite, last_test;    /* where the last test was found */
-	size_t identity_room, link_room; /* of the facts */
+	size_t identity_room, link_room, event_room; /* of the facts */
 	size_t map_room;                 /* of recording->maps */
 	const char **files;              /* samples files taken so far, one a map */
 	int64_t last_ns;

@@ -51,6 +51,12 @@ static void header(struct xml_out *out, const struct run_result *run)
 	xml_open(out, "h1");
 	xml_attr(out, "class", verdict);
 	xml_textf(out, "Verdict: %s", verdict);
+	if (facts->partial || selected < all)
+		xml_elementf(out, "span", "flag", " partial: %zu of %zu", selected, all);
+	if (run_overridden(run))
+		xml_element(out, "span", "flag", " values overridden");
+	if (facts->rehearsal)
+		xml_element(out, "span", "flag", " rehearsed");
 	xml_close(out);
 	xml_elementf(out, "p", "counts",
 	             "%zu tests: %zu pass, %zu fail, %zu inconclusive, %zu error, %zu skipped.",
@@ -59,8 +65,10 @@ static void header(struct xml_out *out, const struct run_result *run)
 	if (facts->partial || selected < all)
 		xml_elementf(out, "p", "note", "Partial: %zu of %zu tests were selected.", selected, all);
 	if (run_overridden(run))
-		xml_element(out, "p", "note",
-		            "Values of the suite were overridden for this run; they are listed below.");
+		xml_element(
+		    out, "p", "note",
+		    "Values of the suite, on which limits may rest, were overridden for this run; they "
+		    "are listed below.");
 	if (facts->rehearsal)
 		xml_element(out, "p", "note",
 		            "A rehearsal on the modelled bench: nothing here was measured on hardware.");
@@ -72,106 +80,6 @@ static void header(struct xml_out *out, const struct run_result *run)
 	else if (!facts->rest_was_needed)
 		xml_element(out, "p", NULL,
 		            "Nothing was commanded, so the bench did not have to come to rest.");
-	xml_close(out);
-}
-
-/* ---- what is not as it should be ------------------------------------------ */
-
-static void count_evidence(const struct run_result *run, size_t *ret_self, size_t *ret_all)
-{
-	*ret_self = *ret_all = 0;
-	for (size_t s = 0; s < run->suite_count; s++)
-		for (size_t t = 0; t < run->suites[s].test_count; t++) {
-			const struct test_result *test = &run->suites[s].tests[t];
-			for (size_t c = 0; c < test->check_count; c++)
-				for (size_t m = 0; m < test->checks[c].metric_count; m++) {
-					const struct metric_result *metric = &test->checks[c].metrics[m];
-					*ret_all += metric->limit_count;
-					if (metric->metric.evidence == EVIDENCE_SELF_REPORTED)
-						*ret_self += metric->limit_count;
-				}
-		}
-}
-
-static bool abnormal_links(struct xml_out *out, const struct run_facts *facts)
-{
-	bool any = false;
-	for (size_t i = 0; i < facts->link_count; i++) {
-		const struct link_counts *link = &facts->links[i];
-		/* A connection is made anew on purpose too, to confirm rest: no sign by itself. */
-		if (link->timeouts + link->garbled == 0)
-			continue;
-		any = true;
-		xml_elementf(out, "li", NULL,
-		             "Link %.64s: of %llu requests %llu had no reply and %llu a garbled one; "
-		             "reconnections: %llu.",
-		             link->link, (unsigned long long)link->requests,
-		             (unsigned long long)link->timeouts, (unsigned long long)link->garbled,
-		             (unsigned long long)link->reconnects);
-	}
-	return any;
-}
-
-static bool abnormal_tests(struct xml_out *out, const struct run_result *run)
-{
-	bool any = false;
-	for (size_t s = 0; s < run->suite_count; s++)
-		for (size_t t = 0; t < run->suites[s].test_count; t++) {
-			const struct recorded_test *recorded = run->suites[s].tests[t].recorded;
-			if (!recorded || recorded->missed_slots + recorded->lost_replies == 0)
-				continue;
-			any = true;
-			xml_open(out, "li");
-			xml_open(out, "a");
-			xml_attrf(out, "href", "#t%zu-%zu", s, t);
-			xml_text(out, recorded->name);
-			xml_close(out);
-			xml_textf(out, ": %zu samples that were due were not taken, %zu replies were lost.",
-			          recorded->missed_slots, recorded->lost_replies);
-			xml_close(out);
-		}
-	return any;
-}
-
-static void abnormal(struct xml_out *out, const struct run_result *run)
-{
-	const struct run_facts *facts = &run->facts;
-	size_t self, all;
-	bool any = false;
-	count_evidence(run, &self, &all);
-	xml_open(out, "section");
-	xml_element(out, "h2", NULL, "What to know before the good news");
-	xml_open(out, "ul");
-	if (facts->aborted) {
-		xml_elementf(out, "li", NULL, "The run was aborted: %s", facts->abort_reason);
-		any = true;
-	}
-	if (facts->rest_was_needed && !facts->rest_confirmed) {
-		xml_elementf(out, "li", NULL, "Rest was not confirmed: %s", facts->rest_reason);
-		any = true;
-	}
-	if (facts->defect) {
-		xml_elementf(out, "li", NULL, "The modelled controller was built wrong on purpose: %.100s.",
-		             facts->defect);
-		any = true;
-	}
-	any |= abnormal_links(out, facts);
-	any |= abnormal_tests(out, run);
-	for (size_t i = 0; facts->rig && i < facts->rig->channel_count; i++)
-		if (html_out_of_date(facts, &facts->rig->infos[i].accuracy)) {
-			xml_elementf(out, "li", NULL, "The instrument of channel %.64s is out of calibration.",
-			             facts->rig->infos[i].name);
-			any = true;
-		}
-	if (self) {
-		xml_elementf(out, "li", NULL,
-		             "%zu of %zu limits rest on what the device under test says of itself.", self,
-		             all);
-		any = true;
-	}
-	if (!any)
-		xml_element(out, "li", NULL, "Nothing abnormal was recorded.");
-	xml_close(out);
 	xml_close(out);
 }
 
@@ -229,6 +137,7 @@ static int html_write(const struct run_result *run, const struct run_folder *fol
                       struct err *reterr)
 {
 	struct xml_out out;
+	int columns = chart_columns(run);
 	if (xml_out_init(&out, reterr) < 0)
 		return -1;
 	xml_raw(&out, "<!DOCTYPE html>\n");
@@ -240,12 +149,15 @@ static int html_write(const struct run_result *run, const struct run_folder *fol
 	xml_open(&out, "body");
 	header(&out, run);
 	xml_open(&out, "main");
+	html_abnormal(&out, run);
 	html_identity(&out, run);
 	cautions(&out);
-	abnormal(&out, run);
-	html_failures(&out, run);
+	html_failures(&out, run, columns);
 	html_tests(&out, run);
-	html_each_test(&out, run, chart_columns(run));
+	html_requirements(&out, run);
+	html_sweeps(&out, run);
+	html_each_test(&out, run, columns);
+	html_sign_off(&out, run);
 	xml_close(&out);
 	xml_close(&out);
 	xml_close(&out);

@@ -3,6 +3,7 @@
 #include <string.h>
 
 #include "report_html.h"
+#include "sha256.h"
 
 static void term(struct xml_out *out, const char *name, const char *text)
 {
@@ -32,6 +33,15 @@ static void suite_terms(struct xml_out *out, const struct run_result *run, size_
 		}
 }
 
+static void hash_term(struct xml_out *out, const char *name, const struct yaml_file *file)
+{
+	char hex[SHA256_HEX_SIZE], text[400];
+	if (!file || !file->bytes || sha256_of_bytes(file->bytes, file->length, hex) < 0)
+		return;
+	(void)snprintf(text, sizeof text, "SHA-256 %s", hex);
+	term(out, name, text);
+}
+
 static void identity_terms(struct xml_out *out, const struct run_result *run)
 {
 	const struct run_facts *facts = &run->facts;
@@ -43,6 +53,9 @@ static void identity_terms(struct xml_out *out, const struct run_result *run)
 	term(out, "Rig", text);
 	for (size_t i = 0; i < run->suite_count; i++)
 		suite_terms(out, run, i);
+	hash_term(out, "Rig file", facts->rig ? facts->rig->file : NULL);
+	for (size_t i = 0; i < run->suite_count; i++)
+		hash_term(out, "Suite file", run->suites[i].suite->file);
 	(void)snprintf(text, sizeof text, "%s UTC, for %s", facts->started_utc,
 	               duration_text(facts->duration_ns, duration, sizeof duration));
 	term(out, "Begun", text);
@@ -157,13 +170,14 @@ static void accuracy_text(const struct channel_info *info, char *buffer, size_t 
 
 static void instruments(struct xml_out *out, const struct run_facts *facts)
 {
-	static const char *const heads[] = {"Channel", "Device", "Limits of error", "Calibrated until"};
+	static const char *const heads[] = {"Channel", "Device", "Evidence", "Limits of error",
+	                                    "Calibrated until"};
 	bool any = false;
 	for (size_t i = 0; facts->rig && i < facts->rig->channel_count; i++)
 		any |= facts->rig->infos[i].accuracy.given;
 	if (!any)
 		return;
-	table_open(out, "Instruments", heads, 4);
+	table_open(out, "Instruments", heads, 5);
 	for (size_t i = 0; i < facts->rig->channel_count; i++) {
 		const struct channel_info *info = &facts->rig->infos[i];
 		char limits[200], until[64] = "not given";
@@ -175,7 +189,10 @@ static void instruments(struct xml_out *out, const struct run_facts *facts)
 			if (html_out_of_date(facts, &info->accuracy))
 				(void)strncat(until, " (out of date)", sizeof until - strlen(until) - 1);
 		}
-		row_of(out, "td", (const char *const[]){info->name, info->device, limits, until}, 4);
+		row_of(out, "td",
+		       (const char *const[]){info->name, info->device ? info->device : "",
+		                             evidence_name(info->evidence), limits, until},
+		       5);
 	}
 	table_close(out);
 }

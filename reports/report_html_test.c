@@ -9,7 +9,7 @@
 /* Above the first a passed test gets its numbers without a plot, above the second a line. */
 enum { BYTES_PLOTS = 7000000, BYTES_SECTIONS = 8500000, STEP_DEPTH = 8, ROWS_MOST = 500 };
 
-static void verdict_word(struct xml_out *out, const char *element, enum verdict verdict)
+void html_verdict(struct xml_out *out, const char *element, enum verdict verdict)
 {
 	xml_open(out, element);
 	xml_attrf(out, "class", "verdict %s", verdict_name(verdict));
@@ -17,11 +17,30 @@ static void verdict_word(struct xml_out *out, const char *element, enum verdict 
 	xml_close(out);
 }
 
-static void test_link(struct xml_out *out, size_t suite, size_t test, const char *name)
+void html_name(struct xml_out *out, const char *name)
+{
+	enum { NAME_MOST = 400 };
+	if (strlen(name) > NAME_MOST) {
+		xml_text(out, name);
+		return;
+	}
+	while (*name) {
+		size_t length = strcspn(name, "[,");
+		bool more = name[length] != '\0';
+		xml_textf(out, "%.*s", (int)(length + more), name);
+		if (more && name[length + 1]) {
+			xml_open(out, "wbr");
+			xml_close_void(out);
+		}
+		name += length + more;
+	}
+}
+
+void html_test_link(struct xml_out *out, size_t suite, size_t test, const char *name)
 {
 	xml_open(out, "a");
 	xml_attrf(out, "href", "#t%zu-%zu", suite, test);
-	xml_text(out, name);
+	html_name(out, name);
 	xml_close(out);
 }
 
@@ -44,7 +63,7 @@ static void limits_not_met(struct xml_out *out, const struct test_result *test)
 					xml_open(out, "ul");
 				begun = true;
 				xml_open(out, "li");
-				verdict_word(out, "span", metric->limits[l].verdict);
+				html_verdict(out, "span", metric->limits[l].verdict);
 				xml_textf(out, " %s (%s)",
 				          metric_text(&metric->metric, metric->limits[l].limit, text, sizeof text),
 				          evidence_name(metric->metric.evidence));
@@ -55,31 +74,51 @@ static void limits_not_met(struct xml_out *out, const struct test_result *test)
 		xml_close(out);
 }
 
-void html_failures(struct xml_out *out, const struct run_result *run)
+/* Whether the picture of a check stands with the failures; `failure` counts them from 0. */
+static bool plot_with_failure(const struct run_result *run, const struct test_result *test,
+                              size_t check, size_t failure)
 {
-	bool begun = false;
+	return failure < FAILURE_PLOTS_MOST && test->checks[check].verdict != VERDICT_PASS &&
+	       chart_possible(run->facts.rig, test, &test->checks[check]);
+}
+
+static void failure(struct xml_out *out, const struct run_result *run, size_t s, size_t t,
+                    size_t number, int columns)
+{
+	const struct test_result *test = &run->suites[s].tests[t];
+	char id[96];
+	xml_open(out, "article");
+	xml_attr(out, "class", verdict_name(test->verdict));
+	xml_attrf(out, "id", "f%zu-%zu", s, t);
+	xml_open(out, "h3");
+	html_test_link(out, s, t, test->test->name);
+	xml_textf(out, " %s ", test->test->title ? test->test->title : "");
+	html_verdict(out, "span", test->verdict);
+	xml_close(out);
+	xml_element(out, "p", NULL, test->reason);
+	limits_not_met(out, test);
+	for (size_t c = 0; c < test->check_count; c++)
+		if (plot_with_failure(run, test, c, number)) {
+			(void)snprintf(id, sizeof id, "t%zu-%zu-c%zu", s, t, c);
+			chart_write(out, run->facts.rig, test, &test->checks[c], id, columns);
+		}
+	xml_close(out);
+}
+
+void html_failures(struct xml_out *out, const struct run_result *run, int chart_columns)
+{
+	size_t count = 0;
 	for (size_t s = 0; s < run->suite_count; s++)
 		for (size_t t = 0; t < run->suites[s].test_count; t++) {
-			const struct test_result *test = &run->suites[s].tests[t];
-			if (!is_failure(test))
+			if (!is_failure(&run->suites[s].tests[t]))
 				continue;
-			if (!begun) {
+			if (count == 0) {
 				xml_open(out, "section");
 				xml_element(out, "h2", NULL, "What did not pass");
 			}
-			begun = true;
-			xml_open(out, "article");
-			xml_attr(out, "class", verdict_name(test->verdict));
-			xml_open(out, "h3");
-			test_link(out, s, t, test->test->name);
-			xml_textf(out, " %s ", test->test->title ? test->test->title : "");
-			verdict_word(out, "span", test->verdict);
-			xml_close(out);
-			xml_element(out, "p", NULL, test->reason);
-			limits_not_met(out, test);
-			xml_close(out);
+			failure(out, run, s, t, count++, chart_columns);
 		}
-	if (begun)
+	if (count)
 		xml_close(out);
 }
 
@@ -116,13 +155,13 @@ void html_tests(struct xml_out *out, const struct run_result *run)
 			xml_open(out, "tr");
 			xml_open(out, "th");
 			xml_attr(out, "scope", "row");
-			test_link(out, s, t, test->test->name);
+			html_test_link(out, s, t, test->test->name);
 			xml_close(out);
 			xml_element(out, "td", NULL, test->test->title ? test->test->title : "");
 			xml_open(out, "td");
 			requirements(out, test->test);
 			xml_close(out);
-			verdict_word(out, "td", test->verdict);
+			html_verdict(out, "td", test->verdict);
 			xml_elementf(out, "td", "number", "%.2f", test_seconds(test));
 			xml_close(out);
 		}
@@ -225,7 +264,7 @@ static void metric_row(struct xml_out *out, const struct metric *metric,
 	            limit ? limit_text(metric, limit->limit, shown, text, sizeof text) : "");
 	xml_element(out, "td", NULL, evidence_name(metric->evidence));
 	if (limit)
-		verdict_word(out, "td", limit->verdict);
+		html_verdict(out, "td", limit->verdict);
 	else
 		xml_element(out, "td", NULL, "not judged");
 	xml_close(out);
@@ -276,8 +315,9 @@ static void metric_table(struct xml_out *out, const struct check_result *check)
 	xml_close(out);
 }
 
+/* failure_number: how many did not pass before this test. */
 static void test_section(struct xml_out *out, const struct run_result *run, size_t s, size_t t,
-                         int columns)
+                         size_t failure_number, int columns)
 {
 	const struct test_result *test = &run->suites[s].tests[t];
 	char id[96];
@@ -285,8 +325,9 @@ static void test_section(struct xml_out *out, const struct run_result *run, size
 	xml_attrf(out, "id", "t%zu-%zu", s, t);
 	xml_attr(out, "class", "test");
 	xml_open(out, "h3");
-	xml_textf(out, "%s %s ", test->test->name, test->test->title ? test->test->title : "");
-	verdict_word(out, "span", test->verdict);
+	html_name(out, test->test->name);
+	xml_textf(out, " %s ", test->test->title ? test->test->title : "");
+	html_verdict(out, "span", test->verdict);
 	xml_close(out);
 	xml_element(out, "p", NULL, test->reason);
 	size_t length = xml_out_length(out);
@@ -320,7 +361,15 @@ static void test_section(struct xml_out *out, const struct run_result *run, size
 			xml_elementf(out, "p", "note", "%s was not evaluated.", check->use->name);
 		metric_table(out, check);
 		(void)snprintf(id, sizeof id, "t%zu-%zu-c%zu", s, t, c);
-		if (xml_out_length(out) < BYTES_PLOTS && chart_possible(run->facts.rig, test, check))
+		if (is_failure(test) && plot_with_failure(run, test, c, failure_number)) {
+			xml_open(out, "p");
+			xml_attr(out, "class", "note");
+			xml_open(out, "a");
+			xml_attrf(out, "href", "#f%zu-%zu", s, t);
+			xml_text(out, "Its plot stands above, with what did not pass.");
+			xml_close(out);
+			xml_close(out);
+		} else if (xml_out_length(out) < BYTES_PLOTS && chart_possible(run->facts.rig, test, check))
 			chart_write(out, run->facts.rig, test, check, id, columns);
 	}
 	xml_close(out);
@@ -329,7 +378,9 @@ static void test_section(struct xml_out *out, const struct run_result *run, size
 void html_each_test(struct xml_out *out, const struct run_result *run, int chart_columns)
 {
 	char label[160];
+	size_t failures = 0;
 	xml_open(out, "section");
+	xml_attr(out, "class", "each");
 	xml_element(out, "h2", NULL, "Each test");
 	xml_element(out, "p", "note",
 	            "Intervals cover 95 % unless a check can guarantee its bounds. A value without an "
@@ -337,8 +388,10 @@ void html_each_test(struct xml_out *out, const struct run_result *run, int chart
 	for (size_t s = 0; s < run->suite_count; s++) {
 		if (run->suite_count > 1)
 			xml_elementf(out, "h3", NULL, "Suite %s", suite_label(run, s, label, sizeof label));
-		for (size_t t = 0; t < run->suites[s].test_count; t++)
-			test_section(out, run, s, t, chart_columns);
+		for (size_t t = 0; t < run->suites[s].test_count; t++) {
+			test_section(out, run, s, t, failures, chart_columns);
+			failures += is_failure(&run->suites[s].tests[t]);
+		}
 	}
 	xml_close(out);
 }

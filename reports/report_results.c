@@ -103,6 +103,24 @@ static json_t *links_value(struct json_out *out, const struct run_facts *facts)
 	return array;
 }
 
+static json_t *events_value(struct json_out *out, const struct run_facts *facts)
+{
+	static const char *const words[] = {"link", "interlock", "rest", "note"};
+	json_t *array = json_array();
+	for (size_t i = 0; i < facts->event_count; i++) {
+		const struct run_event *event = &facts->events[i];
+		json_t *one = json_object();
+		put_text(out, one, "event", words[event->kind]);
+		put_text(out, one, "where", event->where);
+		put_text(out, one, "text", event->text);
+		put_integer(out, one, "first", event->first_ns);
+		put_integer(out, one, "last", event->last_ns);
+		put_integer(out, one, "count", (int64_t)event->count);
+		append(out, array, one);
+	}
+	return array;
+}
+
 static json_t *facts_value(struct json_out *out, const struct run_facts *facts)
 {
 	json_t *object = json_object(), *rest = json_object();
@@ -126,6 +144,7 @@ static json_t *facts_value(struct json_out *out, const struct run_facts *facts)
 	put_text(out, object, "realtime", facts->realtime);
 	put(out, object, "identities", identities_value(out, facts));
 	put(out, object, "links", links_value(out, facts));
+	put(out, object, "events", events_value(out, facts));
 	return object;
 }
 

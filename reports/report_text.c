@@ -163,6 +163,55 @@ const char *test_end_name(enum test_end end)
 	return journal_status_name(JOURNAL_TEST_END, (int)end);
 }
 
+double margin_percent(double value, double min, double max)
+{
+	bool has_min = isfinite(min), has_max = isfinite(max);
+	double least =
+	    fmin(has_min ? value - min : (double)INFINITY, has_max ? max - value : (double)INFINITY);
+	double size = has_min && has_max ? (max - min) / 2 : fabs(has_max ? max : min);
+	if (!isfinite(value) || !isfinite(least))
+		return (double)NAN;
+	return 100 * least / (size > 0 && isfinite(size) ? size : 1);
+}
+
+double test_margin(const struct test_result *test, const struct metric_result **ret_metric)
+{
+	double least = (double)NAN;
+	*ret_metric = NULL;
+	for (size_t c = 0; c < test->check_count; c++)
+		for (size_t m = 0; m < test->checks[c].metric_count; m++) {
+			const struct metric_result *metric = &test->checks[c].metrics[m];
+			for (size_t l = 0; l < metric->limit_count; l++) {
+				const struct limit *limit = metric->limits[l].limit;
+				double margin = margin_percent(metric->metric.value, limit->min, limit->max);
+				if (metric->metric.kind->shape == METRIC_YES_NO || isnan(margin) ||
+				    (*ret_metric && margin >= least))
+					continue;
+				least = margin;
+				*ret_metric = metric;
+			}
+		}
+	return least;
+}
+
+int use_channel(const struct check_use *use)
+{
+	const struct field_table *table = use->kind->fields;
+	int found = -1;
+	for (size_t i = 0; use->params && table && i < table->count; i++) {
+		const struct field *field = &table->fields[i];
+		int channel;
+		if (field->kind != FIELD_CHANNEL)
+			continue;
+		memcpy(&channel, (const char *)use->params + field->offset, sizeof channel);
+		if (channel >= 0 && strcmp(field->key, "channel") == 0)
+			return channel;
+		if (channel >= 0 && found < 0)
+			found = channel;
+	}
+	return found;
+}
+
 size_t run_selected(const struct run_result *run, size_t *ret_all)
 {
 	size_t selected = 0, all = 0;

@@ -30,6 +30,16 @@ const char *plain_text(double value, char *buffer, size_t size);
 const char *evidence_name(enum evidence evidence); /* "independent", "self-reported" */
 const char *test_end_name(enum test_end end);      /* "completed", ... as in the journal */
 
+/* The channel that a check is about: its field "channel", else the first that it has; -1: none. */
+int use_channel(const struct check_use *use);
+/*
+ * How far the value lies inside its limit: the distance to the nearer bound,
+ * in % of half the width between two bounds, else of the bound itself (of 1
+ * where that is 0). Below zero it lies outside; NaN: no bound or no value.
+ */
+double margin_percent(double value, double min, double max);
+/* The least margin of all limits of a test, and whose it is; NaN: none is known. */
+double test_margin(const struct test_result *test, const struct metric_result **ret_metric);
 /* How many tests of the suites are selected, bench tests not counted; *ret_all of how many. */
 size_t run_selected(const struct run_result *run, size_t *ret_all);
 /* Whether a value of a suite was overridden. */

@@ -47,3 +47,15 @@ int sha256_of_file(int fd, char hex[SHA256_HEX_SIZE])
 	errno = cause;
 	return rc;
 }
+
+int sha256_of_bytes(const void *bytes, size_t length, char hex[SHA256_HEX_SIZE])
+{
+	unsigned char digest[EVP_MAX_MD_SIZE];
+	unsigned size = 0;
+	if (EVP_Digest(bytes, length, digest, &size, EVP_sha256(), NULL) != 1 ||
+	    size != (SHA256_HEX_SIZE - 1) / 2)
+		return -1;
+	for (unsigned i = 0; i < size; i++)
+		(void)snprintf(hex + (size_t)2 * i, 3, "%02x", digest[i]);
+	return 0;
+}

@@ -5,6 +5,8 @@
  * SHA-256 of files, by libcrypto. A house of its own, since OpenSSL's headers
  * and err.h both claim the name ERR_STATE. Private to this folder.
  */
+#include <stddef.h>
+
 enum { SHA256_HEX_SIZE = 65 };
 
 /*
@@ -12,5 +14,7 @@ enum { SHA256_HEX_SIZE = 65 };
  * errno where it cannot be read or memory ran out.
  */
 int sha256_of_file(int fd, char hex[SHA256_HEX_SIZE]);
+
+int sha256_of_bytes(const void *bytes, size_t length, char hex[SHA256_HEX_SIZE]);
 
 #endif

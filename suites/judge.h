@@ -55,6 +55,20 @@ struct link_counts {
 	uint64_t requests, timeouts, garbled, exceptions, reconnects;
 };
 
+/*
+ * What went wrong on the way, and what was done on purpose that weakens the
+ * watch over the bench: from the journal, in its order. Equal ones are one.
+ */
+enum run_event_kind { RUN_EVENT_LINK = 0, RUN_EVENT_INTERLOCK, RUN_EVENT_REST, RUN_EVENT_NOTE };
+enum { RUN_EVENTS_MOST = 100 };
+struct run_event {
+	enum run_event_kind kind;
+	const char *where; /* link or channel; "" */
+	const char *text;
+	int64_t first_ns, last_ns;
+	size_t count;
+};
+
 struct run_facts {
 	const struct rig *rig;
 	char tool_version[64];
@@ -73,6 +87,9 @@ struct run_facts {
 	size_t identity_count;
 	struct link_counts *links;
 	size_t link_count;
+	struct run_event *events;
+	size_t event_count;
+	size_t events_left_out; /* beyond RUN_EVENTS_MOST different ones */
 	bool partial;
 	char realtime[128]; /* what was obtained of the scheduler */
 };
