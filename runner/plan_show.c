@@ -116,7 +116,12 @@ static void show_marks(const struct plan_row *row, struct text *out)
 static void show_row(const struct plan *plan, const struct plan_row *row, struct text *out)
 {
 	char begin[40], whole[40], most[40];
-	text_printf(out, "\n%s  %s\n", row->plan.test->name, row->plan.test->title);
+	const struct test *test = row->plan.test;
+	text_puts(out, "\n");
+	text_add_line(out, test->name, strlen(test->name));
+	text_puts(out, "  ");
+	text_add_line(out, test->title, strlen(test->title));
+	text_puts(out, "\n");
 	text_printf(out, "    begins at %s, stimulus %s",
 	            duration_text(row->plan.begin_ns, begin, sizeof begin),
 	            duration_text(row->plan.stimulus_ns, whole, sizeof whole));

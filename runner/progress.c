@@ -71,7 +71,11 @@ static void draw(struct progress_line *line, struct session *session, const stru
 	if (test)
 		add_values(&text, session, test);
 	int columns = terminal_columns() - 1;
-	(void)fprintf(stderr, "\r\033[K%.*s", columns, text_string(&text));
+	struct text clean;
+	text_init(&clean, 0);
+	text_add_line(&clean, text_string(&text), text.length);
+	(void)fprintf(stderr, "\r\033[K%.*s", columns, text_string(&clean));
+	text_release(&clean);
 	(void)fflush(stderr);
 	line->drawn = true;
 	text_release(&text);
@@ -94,9 +98,15 @@ void progress_show(struct progress_line *line, struct session *session, int64_t 
 		return;
 	}
 	if (test && (now.suite != line->suite || now.test != line->test)) {
+		struct text text;
 		char elapsed[32];
-		(void)fprintf(stderr, "%10s  %s  %s\n", duration_text(now_ns, elapsed, sizeof elapsed),
-		              test->name, test->title);
+		text_init(&text, 0);
+		text_printf(&text, "%10s  ", duration_text(now_ns, elapsed, sizeof elapsed));
+		text_add_line(&text, test->name, strlen(test->name));
+		text_puts(&text, "  ");
+		text_add_line(&text, test->title, strlen(test->title));
+		(void)fprintf(stderr, "%s\n", text_string(&text));
+		text_release(&text);
 		line->suite = now.suite;
 		line->test = now.test;
 	}

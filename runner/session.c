@@ -16,12 +16,19 @@
 
 void session_print_error(const struct err *err)
 {
+	struct text text;
+	text_init(&text, 0);
 	if (err->file[0] && err->line > 0)
-		(void)fprintf(stderr, "%s:%d:%d: %s\n", err->file, err->line, err->column, err->message);
-	else if (err->file[0])
-		(void)fprintf(stderr, "%s: %s\n", err->file, err->message);
+		text_printf(&text, "%s:%d:%d: %s", err->file, err->line, err->column, err->message);
 	else
-		(void)fprintf(stderr, "drivetrial: %s\n", err->message);
+		text_printf(&text, "%s: %s", err->file[0] ? err->file : "drivetrial", err->message);
+	/* Paths and words of the command line come as they are, and a CI job's may be anybody's. */
+	struct text clean;
+	text_init(&clean, 0);
+	text_add_line(&clean, text_string(&text), text.length);
+	(void)fprintf(stderr, "%s\n", text_string(&clean));
+	text_release(&clean);
+	text_release(&text);
 }
 
 static int64_t since_start(void *context)

@@ -152,6 +152,15 @@ void text_add_clean(struct text *text, const char *bytes, size_t length)
 	}
 }
 
+void text_add_line(struct text *text, const char *bytes, size_t length)
+{
+	size_t begin = text->length;
+	text_add_clean(text, bytes, length);
+	for (size_t i = begin; i < text->length; i++)
+		if (text->data[i] == '\n' || text->data[i] == '\t')
+			text->data[i] = ' ';
+}
+
 /* Ranges from Unicode's EastAsianWidth (W and F) and general category Mn, coarse. */
 static bool is_wide(unsigned p)
 {

@@ -40,6 +40,8 @@ size_t text_decode(const char *bytes, size_t length, unsigned *ret_code_point);
  * bidirectional controls become a visible escape such as \x1b or \u202e.
  */
 void text_add_clean(struct text *text, const char *bytes, size_t length);
+/* The same on one line: line feeds and tabs become spaces, so that a title cannot forge a line. */
+void text_add_line(struct text *text, const char *bytes, size_t length);
 
 /* Terminal columns of a UTF-8 text: combining marks 0, wide East Asian 2. */
 size_t text_columns(const char *bytes, size_t length);

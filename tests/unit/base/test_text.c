@@ -78,6 +78,18 @@ static void cleans_what_a_terminal_would_obey(void **state)
 	}
 }
 
+static void a_line_stays_one_line(void **state)
+{
+	(void)state;
+	struct text text;
+	const char *title = "one\npass  two\tthree\r\x1b[A";
+	text_init(&text, 0);
+	text_puts(&text, "kept\n");
+	text_add_line(&text, title, strlen(title));
+	assert_string_equal(text_string(&text), "kept\none pass  two three\\x0d\\x1b[A");
+	text_release(&text);
+}
+
 static void counts_columns_of_a_terminal(void **state)
 {
 	(void)state;
@@ -158,6 +170,7 @@ int main(void)
 	    cmocka_unit_test(decodes_well_formed_utf8),
 	    cmocka_unit_test(refuses_what_is_no_utf8),
 	    cmocka_unit_test(cleans_what_a_terminal_would_obey),
+	    cmocka_unit_test(a_line_stays_one_line),
 	    cmocka_unit_test(counts_columns_of_a_terminal),
 	    cmocka_unit_test(stops_at_its_declared_maximum),
 	    cmocka_unit_test(measures_how_far_words_lie_apart),
