@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: Apache-2.0 */
 /* `run` and `rehearse`: the same options but for the bench; see session.h. */
+#include <errno.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -82,8 +83,9 @@ static int take_listed(const char **list, size_t *count, const char *value, cons
 static int take_seed(struct run_options *options, const char *value, struct err *reterr)
 {
 	char *end;
+	errno = 0;
 	options->seed = strtoull(value, &end, 10);
-	if (*value < '0' || *value > '9' || *end != '\0')
+	if (*value < '0' || *value > '9' || *end != '\0' || errno != 0)
 		return err_set(reterr, ERR_USAGE, "--seed wants a whole number, not '%s'", value);
 	return 0;
 }
