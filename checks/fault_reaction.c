@@ -107,6 +107,14 @@ static void put_latency(struct fault_work *work, size_t metric, const struct row
 	          series_value(&rows->series, rows->first + after));
 }
 
+/* Whether the samples end so long before the stimulus that a code may have come unseen. */
+static bool ended_early(const struct fault_work *work, char *why, size_t size)
+{
+	const struct rows *rows = &work->indication;
+	return rows_gap_within(work->in, rows, rows->count - 1, rows->count, work->in->end_ns, why,
+	                       size);
+}
+
 static void code_right(struct fault_work *work)
 {
 	char note[224], idle[64], raised[64], wanted[64];
@@ -117,6 +125,8 @@ static void code_right(struct fault_work *work)
 	} else if (work->idle == work->params->code) {
 		(void)snprintf(note, sizeof note, "the indication showed %s before the cause already",
 		               wanted);
+		fault_unknown(work, CODE_RIGHT, note);
+	} else if (!work->detection.seen && ended_early(work, note, sizeof note)) {
 		fault_unknown(work, CODE_RIGHT, note);
 	} else if (!work->detection.seen) {
 		(void)snprintf(

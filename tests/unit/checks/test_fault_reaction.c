@@ -231,6 +231,31 @@ static void what_never_comes_fails_and_does_not_pass_by_ending_early(void **stat
 	recording_release(&bench.rec);
 }
 
+/* A link that went silent right after the cause proves nothing about the code. */
+static void a_code_that_may_have_come_unseen_is_not_wrong(void **state)
+{
+	(void)state;
+	struct bench bench;
+	bench_init(&bench);
+	struct recording *rec = &bench.rec;
+	recording_mark(rec, "cause", MS(0), MS(30));
+	check_int(&bench.use, "from", 0);
+	rec->begin_ns = MS(-40);
+	rec->end_ns = MS(300);
+	for (double t = -40; t < 4; t += 4)
+		recording_add(rec, bench.code, MS(t), MS(t + 1), 0);
+	recording_add(rec, bench.code, MS(150), MS(180), (double)NAN);
+	const struct metric *metric = run(&bench, "code_right");
+	assert_unknown(metric, "no sample of fault_code");
+	/* Read to the end it is. */
+	for (double t = 200; t < 300; t += 4)
+		recording_add(rec, bench.code, MS(t), MS(t + 1), 0);
+	metric = run(&bench, "code_right");
+	assert_known(metric);
+	assert_near(metric->high, 0, 0, "");
+	recording_release(rec);
+}
+
 static void torque_must_have_been_there_to_go_off(void **state)
 {
 	(void)state;
@@ -404,6 +429,7 @@ int main(void)
 	    cmocka_unit_test(a_healthy_drive_passes_everything),
 	    cmocka_unit_test(each_misbehaviour_is_seen_where_it_lies),
 	    cmocka_unit_test(what_never_comes_fails_and_does_not_pass_by_ending_early),
+	    cmocka_unit_test(a_code_that_may_have_come_unseen_is_not_wrong),
 	    cmocka_unit_test(torque_must_have_been_there_to_go_off),
 	    cmocka_unit_test(a_short_dip_is_not_off),
 	    cmocka_unit_test(missing_rows_widen_and_never_pass),
