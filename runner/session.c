@@ -292,9 +292,15 @@ static int make_link(struct session *session, size_t index, struct err *err)
 	config.clock_context = session;
 	if (apply_addresses(session, (int)index, &config, err) < 0)
 		return -1;
+	for (size_t d = 0; d < rig->device_count; d++)
+		if (rig->devices[d].link == (int)index && rig->devices[d].in_flight > config.in_flight)
+			config.in_flight = rig->devices[d].in_flight;
+	if (!session->options->rehearse && config.tcp_host)
+		return config.in_flight > 1
+		           ? link_tcp_flight_new(&config, &session->links[index], err)
+		           : link_tcp_new(&config, &session->links[index], err);
 	if (!session->options->rehearse)
-		return config.tcp_host ? link_tcp_new(&config, &session->links[index], err)
-		                       : link_rtu_new(&config, &session->links[index], err);
+		return link_rtu_new(&config, &session->links[index], err);
 	struct model_port *port = arena_alloc(&session->arena, sizeof *port);
 	if (!port)
 		return err_set(err, ERR_NOMEM, "no memory for a link");

@@ -4,6 +4,17 @@
  * the order of the suite and waits for each reply; a queue would let a command
  * of an aborted test slip out behind the safe state.
  *
+ * Which group is polled next: of those whose slot has come the one whose next
+ * slot is nearest, asked anew before each block, so that a group of many blocks
+ * and a long period does not hold up a fast one. A group without a pause counts
+ * as if its period were the longest of the others: it takes what is left, and
+ * is never starved. A slot that has passed when its turn comes is skipped and
+ * counted, never made up for.
+ *
+ * Several polls may be under way where the link can and the device's in_flight
+ * allows it, all to one device. A command waits until they are answered and
+ * then goes alone, so that a reply to a write is never mixed up with anything.
+ *
  * Thread rule: fields under "tick only" belong to worker_tick(); fields under
  * "shared" are touched with the mutex held, and the mutex is never held while
  * the link blocks.
@@ -16,6 +27,8 @@
 #include <sys/prctl.h>
 #include <time.h>
 
+enum { FLIGHTS_MOST = 16 };
+
 enum job_state { JOB_FREE = 0, JOB_POSTED, JOB_RUNNING, JOB_DONE };
 
 struct device_state {
@@ -27,22 +40,36 @@ struct device_state {
 	int64_t life_moved_ns;
 };
 
+/* A request that is on the wire. */
+struct flight {
+	const struct poll_block *polled; /* NULL: a job */
+	int device;
+	bool attempt; /* of a job: must be refused */
+	int64_t since_ns;
+};
+
+/* Where a group stands: its slot, and the next block of the round that began with it. */
+struct round {
+	int64_t slot_ns;
+	size_t next;
+};
+
 struct worker {
 	struct worker_config config;
 	const struct rig *rig;
 	/* tick only */
 	struct link *link;
 	struct guard guard;
-	bool open, busy, busy_is_job, job_is_attempt;
+	bool open, draining, broken; /* broken: to be closed once the last flight has ended */
 	int64_t next_open_ns, open_pause_ns;
-	int busy_device;
+	struct flight flights[FLIGHTS_MOST]; /* in the order of their replies */
+	size_t flight_first, flight_count;
 	struct link_request request;
 	struct link_reply reply;
-	const struct poll_block *polled;
 	const struct poll_plan *plan;
-	int64_t slots[GROUPS_MOST];
-	int round_group; /* -1: none under way */
-	size_t round_next;
+	struct round rounds[GROUPS_MOST];
+	int64_t longest_period_ns;
+	bool watch_fired; /* since the conductor was last woken */
 	struct row *row;
 	struct ring rows, events;
 	/* shared */
@@ -91,7 +118,6 @@ int worker_new(const struct worker_config *config, struct worker **ret_worker, s
 	worker->config = *config;
 	worker->rig = rig;
 	worker->link = config->link;
-	worker->round_group = -1;
 	worker->open_pause_ns = 50 * NS_PER_MS;
 	worker->devices = calloc(rig->device_count, sizeof *worker->devices);
 	worker->latest = calloc(rig->channel_count, sizeof *worker->latest);
@@ -204,10 +230,11 @@ static const struct watch *feed_watches(struct worker *worker, const struct read
 		    !block_feeds(worker, block, watch->condition.channel))
 			continue;
 		const struct channel_info *info = &worker->rig->infos[watch->condition.channel];
-		bool usable = good && !(stands && watch->kind == WATCH_AWAIT);
+		bool usable = good && !(stands && watch->kind == WATCH_AWAIT), before = watch->fired;
 		watch_row(watch, reply->sent_ns - info->refresh_ns - info->delay_most_ns,
 		          reply->received_ns - info->delay_least_ns,
 		          usable ? channel_now(worker, watch->condition.channel) : (double)NAN);
+		worker->watch_fired = worker->watch_fired || (watch->fired && !before);
 		if (watch->fired && watch->kind == WATCH_INTERLOCK && !violated)
 			violated = watch;
 	}
@@ -290,62 +317,93 @@ static void count_reply(struct worker *worker, const struct link_reply *reply)
 	counts->lost_replies += reply->status != LINK_OK && reply->status != LINK_EXCEPTION;
 }
 
-static void finish(struct worker *worker, int64_t now_ns)
+/* What worker_silent() and worker_break_off() go by: the oldest flight. Mutex held. */
+static void share_flights(struct worker *worker)
+{
+	const struct flight *oldest = &worker->flights[worker->flight_first];
+	worker->shared_busy = worker->flight_count > 0;
+	worker->shared_busy_device = oldest->device;
+	worker->shared_busy_since_ns = oldest->since_ns;
+}
+
+static void add_flight(struct worker *worker, const struct flight *flight)
+{
+	worker->flights[(worker->flight_first + worker->flight_count++) % FLIGHTS_MOST] = *flight;
+	lock(worker);
+	share_flights(worker);
+	unlock(worker);
+}
+
+/* Takes note of worker->reply, which ends the flight. */
+static void note_reply(struct worker *worker, const struct flight *flight, bool answered)
 {
 	const struct link_reply *reply = &worker->reply;
-	bool answered = reply->status == LINK_OK || reply->status == LINK_EXCEPTION;
-	const struct poll_block *polled = worker->polled;
-	worker->busy = false;
+	struct device_state *device = &worker->devices[flight->device];
 	lock(worker);
 	count_reply(worker, reply);
-	struct device_state *device = &worker->devices[worker->busy_device];
 	device->last_sent_ns = reply->sent_ns;
 	device->last_received_ns = reply->received_ns;
 	/* Of a poll an exception is no measurement; of a command it is an answer. */
-	if (reply->status == LINK_OK || (answered && worker->busy_is_job))
+	if (reply->status == LINK_OK || (answered && !flight->polled))
 		device->last_good_ns = reply->received_ns;
 	device->pause_until_ns =
-	    reply->received_ns + worker->rig->devices[worker->busy_device].minimum_pause_ns;
-	worker->shared_busy = false;
-	if (worker->busy_is_job) {
+	    reply->received_ns + worker->rig->devices[flight->device].minimum_pause_ns;
+	share_flights(worker);
+	if (!flight->polled) {
 		worker->job = worker->job_dropped ? JOB_FREE : JOB_DONE;
 		worker->job_reply = *reply;
 	}
 	unlock(worker);
-	if (!answered && reply->status != LINK_STOPPED) {
+}
+
+static void finish(struct worker *worker, const struct flight *flight, int64_t now_ns)
+{
+	const struct link_reply *reply = &worker->reply;
+	bool answered = reply->status == LINK_OK || reply->status == LINK_EXCEPTION;
+	note_reply(worker, flight, answered);
+	if (!answered && reply->status != LINK_STOPPED && !worker->draining) {
 		char text[256];
-		(void)snprintf(text, sizeof text, "%s: %s", worker->rig->devices[worker->busy_device].name,
+		(void)snprintf(text, sizeof text, "%s: %s", worker->rig->devices[flight->device].name,
 		               reply->message[0] ? reply->message : "no reply");
 		tell(worker, now_ns, text);
 	}
 	if (reply->status == LINK_LOST || reply->status == LINK_STOPPED) {
-		link_close(worker->link);
-		worker->open = false;
+		worker->broken = true;
 		worker->next_open_ns = now_ns + (reply->status == LINK_LOST ? worker->open_pause_ns : 0);
 	}
-	if (!worker->busy_is_job)
-		row_out(worker, polled, reply->status == LINK_OK);
-	worker->config.wake(worker->config.wake_context);
+	worker->draining = (worker->draining || !answered) && worker->flight_count > 0;
+	if (worker->broken && worker->flight_count == 0) {
+		link_close(worker->link);
+		worker->open = worker->broken = false;
+	}
+	if (flight->polled)
+		row_out(worker, flight->polled, reply->status == LINK_OK);
+	/* Waking it for each row was tried: half of the processor time of a fast run went there. */
+	if (!flight->polled || !answered || worker->watch_fired || stop_raised(worker->config.stop))
+		worker->config.wake(worker->config.wake_context);
+	worker->watch_fired = false;
 }
 
 /* ---- what comes next --------------------------------------------------- */
 
-static void skip_slots(struct worker *worker, int group, int64_t now_ns)
+/* The round of a group is over: on to the next slot that has not passed. */
+static void end_round(struct worker *worker, size_t group, int64_t now_ns)
 {
+	struct round *round = &worker->rounds[group];
 	int64_t period = worker->plan->groups[group].period_ns;
-	int64_t slot = worker->slots[group] + period;
+	round->next = 0;
 	if (period == 0) {
-		worker->slots[group] = now_ns;
+		round->slot_ns = now_ns;
 		return;
 	}
-	if (slot < now_ns) {
-		int64_t missed = (now_ns - slot + period - 1) / period;
-		slot += missed * period;
+	round->slot_ns += period;
+	if (round->slot_ns < now_ns) {
+		int64_t missed = (now_ns - round->slot_ns + period - 1) / period;
+		round->slot_ns += missed * period;
 		lock(worker);
 		worker->counts.missed_slots += (uint64_t)missed;
 		unlock(worker);
 	}
-	worker->slots[group] = slot;
 }
 
 static bool is_silent(struct worker *worker, int device)
@@ -356,42 +414,79 @@ static bool is_silent(struct worker *worker, int device)
 	return silent;
 }
 
-/* The next block of the round under way, or of the group whose slot is due; NULL and *due. */
-static const struct poll_block *next_poll(struct worker *worker, int64_t now_ns, int64_t *due)
+/* Of the groups that are due the one whose next slot is nearest; -1 and *due. passed: by group. */
+static int urgent_group(const struct worker *worker, const bool *passed, int64_t now_ns,
+                        int64_t *due)
 {
 	const struct poll_plan *plan = worker->plan;
+	int64_t nearest = INT64_MAX;
+	int urgent = -1;
+	for (size_t i = 0; i < plan->group_count; i++) {
+		const struct round *round = &worker->rounds[i];
+		int64_t period = plan->groups[i].period_ns;
+		int64_t next_slot = round->slot_ns + (period > 0 ? period : worker->longest_period_ns);
+		if (plan->groups[i].count == 0 || passed[i])
+			continue;
+		if (round->slot_ns > now_ns)
+			*due = round->slot_ns < *due ? round->slot_ns : *due;
+		else if (urgent < 0 || next_slot < nearest) {
+			urgent = (int)i;
+			nearest = next_slot;
+		}
+	}
+	return urgent;
+}
+
+/* Whether a poll of the device may go out beside what is under way. */
+static bool may_fly(const struct worker *worker, int device)
+{
+	const struct rig_device *rig_device = &worker->rig->devices[device];
+	size_t most = (size_t)rig_device->in_flight;
+	if (worker->flight_count == 0)
+		return true;
+	if (most > (size_t)worker->link->depth)
+		most = (size_t)worker->link->depth;
+	if (most > FLIGHTS_MOST)
+		most = FLIGHTS_MOST;
+	return worker->flights[worker->flight_first].device == device && worker->flight_count < most &&
+	       rig_device->minimum_pause_ns == 0;
+}
+
+/* The next block to read, taken from its round; NULL and *due where none is due. */
+static const struct poll_block *next_poll(struct worker *worker, int64_t now_ns, int64_t *due)
+{
+	bool passed[GROUPS_MOST] = {false};
 	*due = INT64_MAX;
-	if (!plan)
+	if (!worker->plan)
 		return NULL;
-	for (size_t turns = 0; turns < 2; turns++) {
-		if (worker->round_group >= 0) {
-			const struct poll_group *group = &plan->groups[worker->round_group];
-			while (worker->round_next < group->count) {
-				const struct poll_block *block = &group->blocks[worker->round_next];
-				const struct device_state *device = &worker->devices[block->read->device];
-				if (device->pause_until_ns > now_ns) {
-					*due = device->pause_until_ns;
-					return NULL;
-				}
-				worker->round_next++;
-				if (!is_silent(worker, block->read->device))
-					return block;
-			}
-			skip_slots(worker, worker->round_group, now_ns);
-			worker->round_group = -1;
-		}
-		int first = -1;
-		for (size_t i = 0; i < plan->group_count; i++)
-			if (plan->groups[i].count > 0 && (first < 0 || worker->slots[i] < worker->slots[first]))
-				first = (int)i;
-		if (first < 0)
+	for (size_t turns = 0; turns < 2 * GROUPS_MOST; turns++) {
+		int g = urgent_group(worker, passed, now_ns, due);
+		if (g < 0)
 			return NULL;
-		if (worker->slots[first] > now_ns) {
-			*due = worker->slots[first];
-			return NULL;
+		const struct poll_group *group = &worker->plan->groups[g];
+		struct round *round = &worker->rounds[g];
+		while (round->next < group->count &&
+		       is_silent(worker, group->blocks[round->next].read->device))
+			round->next++;
+		if (round->next == group->count) {
+			/* A round with a period is over when its last reply is there. */
+			if (group->period_ns > 0 && worker->flight_count > 0)
+				passed[g] = true;
+			else
+				end_round(worker, (size_t)g, now_ns);
+			continue;
 		}
-		worker->round_group = first;
-		worker->round_next = 0;
+		const struct poll_block *block = &group->blocks[round->next];
+		int64_t pause_until = worker->devices[block->read->device].pause_until_ns;
+		if (pause_until > now_ns) {
+			*due = pause_until < *due ? pause_until : *due;
+			passed[g] = true;
+			continue;
+		}
+		if (!may_fly(worker, block->read->device))
+			return NULL;
+		round->next++;
+		return block;
 	}
 	*due = now_ns + NS_PER_MS; /* every block is of a silent device */
 	return NULL;
@@ -403,10 +498,13 @@ static void adopt_plan(struct worker *worker, int64_t now_ns)
 	if (worker->plan_changed) {
 		worker->plan = worker->next_plan;
 		worker->plan_changed = false;
-		worker->round_group = -1;
 		worker->plan_since_ns = now_ns;
-		for (int i = 0; i < GROUPS_MOST; i++)
-			worker->slots[i] = now_ns;
+		worker->longest_period_ns = 0;
+		for (size_t i = 0; i < GROUPS_MOST; i++)
+			worker->rounds[i] = (struct round){.slot_ns = now_ns};
+		for (size_t i = 0; worker->plan && i < worker->plan->group_count; i++)
+			if (worker->plan->groups[i].period_ns > worker->longest_period_ns)
+				worker->longest_period_ns = worker->plan->groups[i].period_ns;
 		/* What was not read lately is not known. */
 		for (size_t i = 0; i < worker->rig->channel_count; i++)
 			worker->latest[i] = NAN;
@@ -490,12 +588,15 @@ static bool ensure_open(struct worker *worker, int64_t now_ns, int64_t *due)
 }
 
 /* Nothing goes out that the rig does not allow; true where the request may. */
-static bool guarded(struct worker *worker, int device, bool resting, int64_t now_ns)
+static bool guarded(struct worker *worker, const struct flight *flight, int64_t now_ns)
 {
 	struct err err = {0};
-	if (worker->busy_is_job && worker->job_is_attempt)
+	if (flight->attempt)
 		return true;
-	if (guard_pass(&worker->guard, device, &worker->request, resting, now_ns, &err) == 0)
+	lock(worker);
+	bool resting = worker->rest;
+	unlock(worker);
+	if (guard_pass(&worker->guard, flight->device, &worker->request, resting, now_ns, &err) == 0)
 		return true;
 	(void)stop_raise(worker->config.stop, "a command was held back: %.200s", err.message);
 	worker->reply =
@@ -504,32 +605,27 @@ static bool guarded(struct worker *worker, int device, bool resting, int64_t now
 	return false;
 }
 
-static void begin(struct worker *worker, int device, int64_t now_ns)
+/* Sends worker->request. */
+static void begin(struct worker *worker, const struct flight *flight, int64_t now_ns)
 {
 	struct err err = {0};
-	lock(worker);
-	worker->shared_busy = true;
-	worker->shared_busy_device = device;
-	worker->shared_busy_since_ns = now_ns;
-	bool resting = worker->rest;
-	unlock(worker);
-	worker->busy = true;
-	worker->busy_device = device;
-	if (!guarded(worker, device, resting, now_ns)) {
-		finish(worker, now_ns);
+	if (!guarded(worker, flight, now_ns)) {
+		finish(worker, flight, now_ns);
 		return;
 	}
-	if (link_begin(worker->link, &worker->request, now_ns, &err) == 0)
+	if (link_begin(worker->link, &worker->request, now_ns, &err) == 0) {
+		add_flight(worker, flight);
 		return;
+	}
 	worker->reply.status = LINK_LOST;
 	worker->reply.sent_ns = now_ns;
 	worker->reply.received_ns = clock_now(&worker->config.clock);
 	(void)snprintf(worker->reply.message, sizeof worker->reply.message, "%.150s", err.message);
-	finish(worker, now_ns);
+	finish(worker, flight, now_ns);
 }
 
 /* Takes the posted job, unless it is for a silent device or a pause holds it back. */
-static bool take_job(struct worker *worker, int64_t now_ns, int *device, int64_t *due)
+static bool take_job(struct worker *worker, int64_t now_ns, struct flight *flight, int64_t *due)
 {
 	bool taken = false;
 	lock(worker);
@@ -540,8 +636,8 @@ static bool take_job(struct worker *worker, int64_t now_ns, int *device, int64_t
 		} else {
 			worker->job = JOB_RUNNING;
 			worker->request = worker->job_request;
-			worker->job_is_attempt = worker->job_attempt;
-			*device = worker->job_device;
+			*flight = (struct flight){
+			    .device = worker->job_device, .attempt = worker->job_attempt, .since_ns = now_ns};
 			taken = true;
 		}
 	}
@@ -558,40 +654,73 @@ static bool is_wanted(struct worker *worker)
 	return waits;
 }
 
+static bool take_poll(struct worker *worker, int64_t now_ns, struct flight *flight, int64_t *due)
+{
+	const struct poll_block *polled = next_poll(worker, now_ns, due);
+	if (!polled)
+		return false;
+	*flight = (struct flight){.polled = polled, .device = polled->read->device, .since_ns = now_ns};
+	worker->request = polled->request;
+	return true;
+}
+
+/* Sends one more poll beside those under way; false where the next reply must come first. */
+static bool fly_another(struct worker *worker, int64_t now_ns)
+{
+	struct flight flight;
+	int64_t due;
+	if (worker->link->depth < 2 || worker->draining ||
+	    !worker->flights[worker->flight_first].polled)
+		return false;
+	lock(worker);
+	bool wanted = worker->job == JOB_POSTED || worker->renew || worker->plan_changed;
+	unlock(worker);
+	if (wanted || !take_poll(worker, now_ns, &flight, &due))
+		return false;
+	begin(worker, &flight, now_ns);
+	return true;
+}
+
+static void watch_devices(struct worker *worker, int64_t now_ns)
+{
+	bool before = stop_raised(worker->config.stop);
+	lock(worker);
+	check_stale(worker, now_ns);
+	unlock(worker);
+	if (!before && stop_raised(worker->config.stop))
+		worker->config.wake(worker->config.wake_context);
+}
+
 int64_t worker_tick(struct worker *worker, int64_t now_ns)
 {
-	if (worker->busy) {
+	if (worker->flight_count > 0) {
+		if (fly_another(worker, now_ns))
+			return now_ns;
 		int64_t due = link_end(worker->link, now_ns, &worker->reply);
 		if (due > now_ns)
 			return due;
 		int64_t after = clock_now(&worker->config.clock);
 		now_ns = after > now_ns ? after : now_ns;
-		finish(worker, now_ns);
+		struct flight flight = worker->flights[worker->flight_first];
+		worker->flight_first = (worker->flight_first + 1) % FLIGHTS_MOST;
+		worker->flight_count--;
+		finish(worker, &flight, now_ns);
 	}
+	watch_devices(worker, now_ns);
+	if (worker->flight_count > 0)
+		return now_ns;
 	adopt_plan(worker, now_ns);
-	lock(worker);
-	check_stale(worker, now_ns);
-	unlock(worker);
 	int64_t due = INT64_MAX, open_due = INT64_MAX;
 	bool wanted = is_wanted(worker) || worker->plan;
 	if (!wanted || !ensure_open(worker, now_ns, &open_due))
 		return open_due;
 	int64_t after = clock_now(&worker->config.clock);
 	now_ns = after > now_ns ? after : now_ns;
-	int device = 0;
-	if (take_job(worker, now_ns, &device, &due)) {
-		worker->busy_is_job = true;
-		worker->polled = NULL;
-	} else {
-		int64_t poll_due;
-		worker->polled = next_poll(worker, now_ns, &poll_due);
-		if (!worker->polled)
-			return poll_due < due ? poll_due : due;
-		device = worker->polled->read->device;
-		worker->busy_is_job = false;
-		worker->request = worker->polled->request;
-	}
-	begin(worker, device, now_ns);
+	struct flight flight;
+	int64_t poll_due = INT64_MAX;
+	if (!take_job(worker, now_ns, &flight, &due) && !take_poll(worker, now_ns, &flight, &poll_due))
+		return poll_due < due ? poll_due : due;
+	begin(worker, &flight, now_ns);
 	return now_ns;
 }
 
@@ -605,12 +734,13 @@ void worker_loop(struct worker *worker)
 		int64_t due = worker_tick(worker, now);
 		lock(worker);
 		while (!worker->quit && !worker->woken) {
+			/* First this clock, so that a thread held up in between wakes early, not late. */
+			struct timespec at;
+			(void)clock_gettime(CLOCK_MONOTONIC, &at);
 			now = clock_now(&worker->config.clock);
 			if (due <= now)
 				break;
 			int64_t pause = due == INT64_MAX || due - now > NS_PER_S ? NS_PER_S : due - now;
-			struct timespec at;
-			(void)clock_gettime(CLOCK_MONOTONIC, &at);
 			int64_t ns = at.tv_nsec + pause;
 			at.tv_sec += ns / NS_PER_S;
 			at.tv_nsec = ns % NS_PER_S;

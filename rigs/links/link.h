@@ -14,6 +14,10 @@
  *     int64_t due = link_end(link, clock(), &reply);
  *     if (due > now) come back at `due`; else the reply is there
  *
+ * A link whose depth is above 1 takes as many requests before the first end();
+ * end() then gives the replies in the order of the requests. After one that is
+ * neither OK nor EXCEPTION all others end before anything else may be begun.
+ *
  * Invariants. One worker owns a link and is the sole caller of everything but
  * link_interrupt(), which any thread may call. After a request whose reply is
  * not LINK_OK or LINK_EXCEPTION the backend has made sure (flush, quiet time,
@@ -104,6 +108,7 @@ struct link {
 	/* Monotonic time in ns; the backend stamps sent_ns and received_ns with it. */
 	int64_t (*clock)(void *context);
 	void *clock_context;
+	int depth;         /* requests that may be under way; 0 is as 1 */
 	char address[128]; /* for messages: "tcp 127.0.0.1:15020" */
 };
 
@@ -117,6 +122,7 @@ struct link_config {
 	enum link_parity parity;
 	int stop_bits;
 	int64_t reply_timeout_ns;
+	int in_flight; /* link_tcp_flight_new(): requests that may be under way, 1 to 16 */
 	int64_t (*clock)(void *context);
 	void *clock_context;
 };
@@ -128,6 +134,9 @@ struct link_config {
  */
 int link_tcp_new(const struct link_config *config, struct link **ret_link, struct err *reterr);
 int link_rtu_new(const struct link_config *config, struct link **ret_link, struct err *reterr);
+/* Modbus TCP with several requests under way, for devices that say that they take them. */
+int link_tcp_flight_new(const struct link_config *config, struct link **ret_link,
+                        struct err *reterr);
 
 /*
  * The modelled bench in this process, in virtual time. `execute` answers one

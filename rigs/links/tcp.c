@@ -19,8 +19,6 @@
  */
 #include <errno.h>
 #include <netdb.h>
-#include <netinet/in.h>
-#include <netinet/tcp.h>
 #include <poll.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -29,6 +27,7 @@
 #include <unistd.h>
 
 #include "pdu.h"
+#include "tcp_dial.h"
 #include "waiting.h"
 
 enum {
@@ -70,63 +69,10 @@ static void tcp_close(struct link *link)
 	tcp->busy = false;
 }
 
-static void set_options(const struct tcp_link *tcp, int fd)
-{
-	const int on = 1;
-	const unsigned gone_ms = (unsigned)(2 * tcp->timeout_ns / 1000000) + 1;
-	/* Best effort: without them the link is slower to send or to see a dead peer. */
-	(void)setsockopt(fd, IPPROTO_TCP, TCP_NODELAY, &on, sizeof on);
-	(void)setsockopt(fd, SOL_SOCKET, SO_KEEPALIVE, &on, sizeof on);
-	(void)setsockopt(fd, IPPROTO_TCP, TCP_USER_TIMEOUT, &gone_ms, sizeof gone_ms);
-}
-
-/* Connects to one address. Returns the descriptor; -1 with errno; ECANCELED: broken off. */
-static int connect_to(const struct tcp_link *tcp, const struct addrinfo *to, int64_t deadline_ns)
-{
-	int fd = socket(to->ai_family, to->ai_socktype | SOCK_NONBLOCK | SOCK_CLOEXEC, to->ai_protocol);
-	if (fd < 0)
-		return -1;
-	set_options(tcp, fd);
-	int code = 0;
-	socklen_t size = sizeof code;
-	if (connect(fd, to->ai_addr, to->ai_addrlen) < 0) {
-		if (errno != EINPROGRESS) {
-			code = errno;
-		} else {
-			switch (waiting_for(&tcp->waking, fd, POLLOUT, deadline_ns)) {
-			case WAITED_READY:
-				if (getsockopt(fd, SOL_SOCKET, SO_ERROR, &code, &size) < 0)
-					code = errno;
-				break;
-			case WAITED_TIMEOUT:
-				code = ETIMEDOUT;
-				break;
-			case WAITED_STOPPED:
-				code = ECANCELED;
-				break;
-			case WAITED_FAILED:
-				code = errno;
-				break;
-			}
-		}
-	}
-	if (code == 0)
-		return fd;
-	(void)close(fd);
-	errno = code;
-	return -1;
-}
-
 static int tcp_connect(struct tcp_link *tcp)
 {
-	int64_t deadline_ns = waiting_now() + tcp->timeout_ns;
 	tcp_close(&tcp->link);
-	errno = ENOENT;
-	for (const struct addrinfo *to = tcp->addresses; to && tcp->fd < 0; to = to->ai_next) {
-		tcp->fd = connect_to(tcp, to, deadline_ns);
-		if (tcp->fd < 0 && (errno == ECANCELED || errno == ETIMEDOUT))
-			break;
-	}
+	tcp->fd = tcp_dial(&tcp->waking, tcp->addresses, tcp->timeout_ns);
 	return tcp->fd < 0 ? -1 : 0;
 }
 
@@ -361,8 +307,6 @@ static const struct link_ops tcp_ops = {
 
 int link_tcp_new(const struct link_config *config, struct link **ret_link, struct err *reterr)
 {
-	const struct addrinfo hints = {.ai_socktype = SOCK_STREAM, .ai_flags = AI_NUMERICSERV};
-	char port[8];
 	*ret_link = NULL;
 	struct tcp_link *tcp = calloc(1, sizeof *tcp);
 	if (!tcp)
@@ -374,17 +318,12 @@ int link_tcp_new(const struct link_config *config, struct link **ret_link, struc
 	tcp->link.clock_context = config->clock_context;
 	(void)snprintf(tcp->link.address, sizeof tcp->link.address, "tcp %s:%u", config->tcp_host,
 	               config->tcp_port);
-	(void)snprintf(port, sizeof port, "%u", config->tcp_port);
 	if (waking_init(&tcp->waking) < 0) {
 		err_set(reterr, ERR_LINK, "%s: no file descriptor left", tcp->link.address);
 		goto fail;
 	}
-	int code = getaddrinfo(config->tcp_host, port, &hints, &tcp->addresses);
-	if (code != 0) {
-		tcp->addresses = NULL;
-		err_set(reterr, ERR_LINK, "%s: %s", tcp->link.address, gai_strerror(code));
+	if (tcp_resolve(config, tcp->link.address, &tcp->addresses, reterr) < 0)
 		goto fail;
-	}
 	*ret_link = &tcp->link;
 	return 0;
 fail:
