@@ -15,6 +15,7 @@
 #include <sys/signalfd.h>
 #include <unistd.h>
 
+#include "realtime.h"
 #include "session.h"
 
 static void *conduct(void *context)
@@ -35,10 +36,27 @@ struct crew {
 	bool conducting;
 };
 
+/* What --realtime obtains; the run goes on without it. */
+static void hurry(struct session *session, const struct crew *crew, struct realtime *realtime)
+{
+	char *text = session->facts.realtime;
+	for (size_t i = 0; i < crew->worker_count; i++)
+		realtime_thread(realtime, crew->workers[i], REALTIME_LINK_PRIORITY, (int)i);
+	if (crew->conducting)
+		realtime_thread(realtime, crew->conductor, REALTIME_CONDUCTOR_PRIORITY, -1);
+	realtime_text(realtime, text, sizeof session->facts.realtime);
+	if (realtime->fifo < realtime->threads || realtime->locked == 0)
+		(void)fprintf(stderr,
+		              "drivetrial: --realtime was obtained in part only: %s. SCHED_FIFO needs "
+		              "CAP_SYS_NICE or an rtprio limit, locked memory a memlock limit\n",
+		              text);
+}
+
 static int start(struct session *session, struct crew *crew)
 {
 	for (size_t i = 0; i < session->rig->link_count && i < 64; i++) {
 		struct worker *worker = conductor_worker(session->conductor, i);
+		worker_spin(worker, session->options->realtime ? REALTIME_SPIN_NS : 0);
 		if (pthread_create(&crew->workers[i], NULL, work, worker) != 0)
 			return -1;
 		crew->worker_count = i + 1;
@@ -94,6 +112,7 @@ int engine_real(struct session *session)
 	sigset_t set;
 	struct crew crew = {0};
 	struct progress_line line;
+	struct realtime realtime;
 	stop_signals(&set);
 	(void)prctl(PR_SET_TIMERSLACK, 1UL);
 	int fd = -1;
@@ -103,12 +122,16 @@ int engine_real(struct session *session)
 		return EXIT_INTERNAL;
 	}
 	progress_init(&line, session->options->quiet);
+	if (session->options->realtime)
+		realtime_begin(&realtime);
 	if (start(session, &crew) < 0) {
 		(void)stop_raise(&session->stop, "a thread could not be started");
 		if (!crew.conducting)
 			/* Nothing was commanded: the workers alone command nothing. */
 			(void)fprintf(stderr, "drivetrial: a thread could not be started\n");
 	}
+	if (session->options->realtime)
+		hurry(session, &crew, &realtime);
 	while (crew.conducting && !conductor_ended(session->conductor)) {
 		struct pollfd poll_fd = {.fd = fd, .events = POLLIN};
 		int suite, test;

@@ -53,7 +53,7 @@ struct run_options {
 	uint64_t seed;
 	int64_t wait_ns; /* for a rig that is in use */
 	const char *defect;
-	bool quiet, verbose, yes;
+	bool quiet, verbose, yes, realtime;
 };
 
 struct session {

@@ -17,6 +17,7 @@ static const struct option_row RUN_ROWS[] = {
     {"tag", true, "TAG: runs the tests with this tag only; may be given often"},
     {"part", true, "I/N: runs the I-th of N parts of about equal duration"},
     {"link", true, "LINK=ADDRESS: another address, tcp:HOST:PORT or rtu:/dev/PATH"},
+    {"realtime", false, "real-time scheduling and locked memory, as far as they are allowed"},
     {"quiet", false, "no progress"},
     {"help", false, "this text"},
 };
@@ -117,6 +118,8 @@ int run_option_take(struct run_options *options, const char *name, const char *v
 		options->defect = value;
 	else if (strcmp(name, "quiet") == 0)
 		options->quiet = true;
+	else if (strcmp(name, "realtime") == 0)
+		options->realtime = true;
 	else if (strcmp(name, "wait") == 0)
 		return take_wait(options, value, reterr);
 	else if (strcmp(name, "set") == 0)

@@ -68,7 +68,7 @@ struct worker {
 	struct link_reply reply;
 	const struct poll_plan *plan;
 	struct round rounds[GROUPS_MOST];
-	int64_t longest_period_ns;
+	int64_t longest_period_ns, spin_ns;
 	bool watch_fired; /* since the conductor was last woken */
 	struct row *row;
 	struct ring rows, events;
@@ -123,7 +123,12 @@ int worker_new(const struct worker_config *config, struct worker **ret_worker, s
 	worker->latest = calloc(rig->channel_count, sizeof *worker->latest);
 	size_t row_size = sizeof *worker->row + config->row_values_most * sizeof(double);
 	worker->row = calloc(1, row_size);
-	(void)pthread_mutex_init(&worker->mutex, NULL);
+	/* Main's progress line takes it too, and must not hold up a link of a higher priority. */
+	pthread_mutexattr_t attributes;
+	(void)pthread_mutexattr_init(&attributes);
+	(void)pthread_mutexattr_setprotocol(&attributes, PTHREAD_PRIO_INHERIT);
+	(void)pthread_mutex_init(&worker->mutex, &attributes);
+	(void)pthread_mutexattr_destroy(&attributes);
 	(void)pthread_cond_init(&worker->cond, NULL);
 	if (!worker->devices || !worker->latest || !worker->row ||
 	    ring_init(&worker->rows, row_size, 16384, reterr) < 0 ||
@@ -726,32 +731,45 @@ int64_t worker_tick(struct worker *worker, int64_t now_ns)
 
 /* ---- the thread -------------------------------------------------------- */
 
+/* Waits until shortly before due_ns, or for a wake; a second at most. Mutex held. True: woken. */
+static bool wait_until(struct worker *worker, int64_t due_ns)
+{
+	while (!worker->quit && !worker->woken) {
+		/* First this clock, so that a thread held up in between wakes early, not late. */
+		struct timespec at;
+		(void)clock_gettime(CLOCK_MONOTONIC, &at);
+		int64_t left = due_ns - worker->spin_ns - clock_now(&worker->config.clock);
+		if (left <= 0)
+			return false;
+		int64_t ns = at.tv_nsec + (left > NS_PER_S ? NS_PER_S : left);
+		at.tv_sec += ns / NS_PER_S;
+		at.tv_nsec = ns % NS_PER_S;
+		(void)pthread_cond_clockwait(&worker->cond, &worker->mutex, CLOCK_MONOTONIC, &at);
+	}
+	return true;
+}
+
 void worker_loop(struct worker *worker)
 {
 	(void)prctl(PR_SET_TIMERSLACK, 1UL);
 	for (;;) {
-		int64_t now = clock_now(&worker->config.clock);
-		int64_t due = worker_tick(worker, now);
+		int64_t due = worker_tick(worker, clock_now(&worker->config.clock));
 		lock(worker);
-		while (!worker->quit && !worker->woken) {
-			/* First this clock, so that a thread held up in between wakes early, not late. */
-			struct timespec at;
-			(void)clock_gettime(CLOCK_MONOTONIC, &at);
-			now = clock_now(&worker->config.clock);
-			if (due <= now)
-				break;
-			int64_t pause = due == INT64_MAX || due - now > NS_PER_S ? NS_PER_S : due - now;
-			int64_t ns = at.tv_nsec + pause;
-			at.tv_sec += ns / NS_PER_S;
-			at.tv_nsec = ns % NS_PER_S;
-			(void)pthread_cond_clockwait(&worker->cond, &worker->mutex, CLOCK_MONOTONIC, &at);
-		}
+		bool woken = wait_until(worker, due);
 		worker->woken = false;
 		bool quit = worker->quit;
 		unlock(worker);
 		if (quit)
 			return;
+		/* At most spin_ns: a wake that comes meanwhile waits for as long. */
+		while (!woken && worker->spin_ns > 0 && clock_now(&worker->config.clock) < due)
+			;
 	}
+}
+
+void worker_spin(struct worker *worker, int64_t spin_ns)
+{
+	worker->spin_ns = spin_ns;
 }
 
 static void wake_worker(struct worker *worker)

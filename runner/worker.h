@@ -76,6 +76,8 @@ int64_t worker_tick(struct worker *worker, int64_t now_ns);
 
 /* The thread's body: ticks and waits until worker_quit(). */
 void worker_loop(struct worker *worker);
+/* Before the thread starts: it spins for as long before each instant that it waits for. */
+void worker_spin(struct worker *worker, int64_t spin_ns);
 void worker_quit(struct worker *worker);
 
 /*
