@@ -8,8 +8,7 @@
 
 #include "session.h"
 
-/* Ticks everybody at one instant until all wait for a later one; returns the earliest of those. */
-static int64_t settle(struct session *session)
+int64_t engine_settle(struct session *session)
 {
 	int64_t now = session->virtual_clock.now_ns;
 	int64_t due = now;
@@ -36,7 +35,7 @@ int engine_virtual(struct session *session)
 	struct progress_line line;
 	progress_init(&line, session->options->quiet);
 	for (unsigned long loops = 0; !conductor_ended(session->conductor); loops++) {
-		int64_t due = settle(session);
+		int64_t due = engine_settle(session);
 		int suite, test;
 		int64_t now = session->virtual_clock.now_ns - session->origin_ns;
 		if (due == INT64_MAX) {

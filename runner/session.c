@@ -220,6 +220,9 @@ static size_t execute(void *context, uint8_t unit, const uint8_t *pdu, size_t le
 	struct model_port *port = context;
 	struct served *served = port->session->served;
 	model_advance(served_model(served), at_ns);
+	if (port->session->is_cut &&
+	    port->session->is_cut(port->session->is_cut_context, port->link, at_ns))
+		return 0;
 	return served_answer(served, port->link, unit, pdu, length, ret_reply);
 }
 
@@ -296,9 +299,8 @@ static int make_link(struct session *session, size_t index, struct err *err)
 		if (rig->devices[d].link == (int)index && rig->devices[d].in_flight > config.in_flight)
 			config.in_flight = rig->devices[d].in_flight;
 	if (!session->options->rehearse && config.tcp_host)
-		return config.in_flight > 1
-		           ? link_tcp_flight_new(&config, &session->links[index], err)
-		           : link_tcp_new(&config, &session->links[index], err);
+		return config.in_flight > 1 ? link_tcp_flight_new(&config, &session->links[index], err)
+		                            : link_tcp_new(&config, &session->links[index], err);
 	if (!session->options->rehearse)
 		return link_rtu_new(&config, &session->links[index], err);
 	struct model_port *port = arena_alloc(&session->arena, sizeof *port);

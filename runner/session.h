@@ -69,6 +69,9 @@ struct session {
 	int64_t origin_ns;
 	/* the bench */
 	struct served *served; /* rehearse */
+	/* Rehearse, for tests of the ways out: whether a wire is cut at that time; NULL: never. */
+	bool (*is_cut)(void *context, int link, int64_t at_ns);
+	void *is_cut_context;
 	struct link **links;
 	struct stop stop;
 	struct conductor *conductor;
@@ -120,6 +123,11 @@ int session_exit_of(const struct err *err);
 void engine_hold_signals(void);
 int engine_real(struct session *session);
 int engine_virtual(struct session *session);
+/*
+ * In virtual time: ticks everybody at the present instant until all wait for a
+ * later one, and returns the earliest of those (of the virtual clock).
+ */
+int64_t engine_settle(struct session *session);
 
 /* progress.c */
 struct progress_line {
