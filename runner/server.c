@@ -12,6 +12,7 @@
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
+#include <sys/prctl.h>
 #include <unistd.h>
 
 #include "waiting.h"
@@ -83,6 +84,14 @@ static bool split_address(const char *address, char *host, size_t size, unsigned
 	return colon[1] >= '0' && colon[1] <= '9' && *end == '\0' && port <= 65535;
 }
 
+static bool split_rate(const char *text, unsigned *ret_baud)
+{
+	char *end;
+	unsigned long baud = strtoul(text, &end, 10);
+	*ret_baud = (unsigned)baud;
+	return text[0] >= '0' && text[0] <= '9' && *end == '\0' && baud <= 10000000;
+}
+
 int server_listen(struct server *server, int link, const char *address, struct err *reterr)
 {
 	const struct link_config *config = &server->rig->links[link].config;
@@ -93,10 +102,12 @@ int server_listen(struct server *server, int link, const char *address, struct e
 	if (!address && config->tcp_host)
 		return server_tcp_listen(served, config->tcp_host, config->tcp_port, reterr);
 	if (!address || strcmp(address, "rtu") == 0)
-		return server_rtu_open(served, config, reterr);
+		return server_rtu_open(served, config, -1, reterr);
+	if (strncmp(address, "rtu:", 4) == 0 && split_rate(address + 4, &port))
+		return server_rtu_open(served, config, (int)port, reterr);
 	if (strncmp(address, "tcp:", 4) != 0 || !split_address(address + 4, host, sizeof host, &port))
-		return err_set(reterr, ERR_USAGE, "'%s' is no address: write tcp:HOST:PORT or rtu",
-		               address);
+		return err_set(reterr, ERR_USAGE,
+		               "'%s' is no address: write tcp:HOST:PORT, rtu or rtu:BAUD", address);
 	return server_tcp_listen(served, host, port, reterr);
 }
 
@@ -177,7 +188,7 @@ static int wait(struct server *server, struct watch_set *set)
 {
 	int64_t until_ns = waiting_now() + STEP_NS;
 	for (int i = 0; i < (int)server->rig->link_count; i++) {
-		int64_t end_ns = server_rtu_silence(server, i);
+		int64_t end_ns = server_rtu_due(server, i);
 		until_ns = end_ns < until_ns ? end_ns : until_ns;
 	}
 	int64_t left_ns = until_ns - waiting_now();
@@ -197,6 +208,7 @@ int server_run(struct server *server, int wake_fd, bool (*on_wake)(void *context
 	int rc = set.fds && set.watched ? 0 : -1;
 	bool ended = rc < 0;
 
+	(void)prctl(PR_SET_TIMERSLACK, 1UL); /* a paced line needs it */
 	if (server->start_ns < 0)
 		server->start_ns = waiting_now();
 	while (!ended) {

@@ -30,8 +30,9 @@ void server_release(struct server *server); /* takes NULL */
 
 /*
  * Opens a link of the rig. address: "tcp:HOST:PORT" (port 0: any free one),
- * "rtu" (a new pseudo terminal), or NULL for what the rig file says. Errors:
- * ERR_USAGE (no address), ERR_LINK (cannot be opened).
+ * "rtu" (a new pseudo terminal, as slow as a line of the rig's baud rate),
+ * "rtu:BAUD" (of this rate; 0: not slowed), or NULL for what the rig file says.
+ * Errors: ERR_USAGE (no address), ERR_LINK (cannot be opened).
  */
 int server_listen(struct server *server, int link, const char *address, struct err *reterr);
 /* "tcp:127.0.0.1:15020" or "rtu:/dev/pts/3"; "" before server_listen(). Borrowed. */

@@ -20,9 +20,17 @@ struct served_link {
 	int listener;      /* TCP; -1: none */
 	int master, slave; /* RTU; -1: none. The slave is held so that the master never hangs up. */
 	int64_t silence_ns;
-	int64_t last_byte_ns; /* monotonic */
+	int64_t first_byte_ns, last_byte_ns; /* monotonic */
 	size_t length;
 	uint8_t bytes[RTU_ADU_MOST];
+	/* RTU, paced as a wire is: times are monotonic */
+	int64_t character_ns; /* 0: not paced */
+	int64_t t35_ns;
+	size_t request_length; /* a whole request that is answered at answer_ns; 0: none */
+	int64_t answer_ns;
+	size_t out_length, out_done; /* the reply on its way, byte by byte since out_ns */
+	int64_t out_ns;
+	uint8_t out[RTU_ADU_MOST];
 };
 
 struct server {
@@ -43,9 +51,11 @@ void server_tcp_accept(struct server *server, int link);
 /* Reads and answers; closes the client where it ends or breaks the protocol. */
 void server_tcp_serve(struct server *server, struct tcp_client *client);
 
-int server_rtu_open(struct served_link *link, const struct link_config *config, struct err *reterr);
+/* baud: of the pace; 0: as fast as the pty takes it; -1: what the rig says. */
+int server_rtu_open(struct served_link *link, const struct link_config *config, int baud,
+                    struct err *reterr);
 void server_rtu_receive(struct server *server, int link);
-/* Ends a frame by silence. Returns when to look again, or INT64_MAX. */
-int64_t server_rtu_silence(struct server *server, int link);
+/* Does what is due: ends a frame by silence, answers, sends. When to look again, or INT64_MAX. */
+int64_t server_rtu_due(struct server *server, int link);
 
 #endif

@@ -23,7 +23,10 @@ enum { LISTENS_MOST = 16 };
 
 static const struct option_row ROWS[] = {
     {"rig", true, "the rig file (needed); it must have a model: section"},
-    {"listen", true, "LINK=ADDRESS: tcp:HOST:PORT (port 0: any free one) or rtu (a new pty)"},
+    {"listen", true,
+     "LINK=ADDRESS: tcp:HOST:PORT (port 0: any free one) or rtu:BAUD (a new pty, as slow as such "
+     "a\n"
+     "                 line; rtu: of the rig's rate; rtu:0: not slowed)"},
     {"defect", true, "NAME: builds the controller wrong in a named way; 'list' shows them"},
     {"seed", true, "N: of noise; default 1"},
     {"help", false, "this text"},

@@ -49,7 +49,7 @@ static void *serve(void *context)
 	return NULL;
 }
 
-static int setup(void **state)
+static int setup_line(void **state, const char *line)
 {
 	struct bench *bench = calloc(1, sizeof *bench);
 	struct err err = {0};
@@ -63,11 +63,26 @@ static int setup(void **state)
 	assert_non_null(bench->served);
 	assert_int_equal(server_new(bench->served, bench->rig, &bench->server, &err), 0);
 	assert_int_equal(server_listen(bench->server, 0, "tcp:127.0.0.1:0", &err), 0);
-	assert_int_equal(server_listen(bench->server, 1, "rtu", &err), 0);
+	assert_int_equal(server_listen(bench->server, 1, line, &err), 0);
 	bench->wake_fd = eventfd(0, EFD_CLOEXEC);
 	assert_int_equal(pthread_create(&bench->thread, NULL, serve, bench), 0);
 	*state = bench;
 	return 0;
+}
+
+static int setup(void **state)
+{
+	return setup_line(state, "rtu");
+}
+
+static int setup_slow(void **state)
+{
+	return setup_line(state, "rtu:1200");
+}
+
+static int setup_unpaced(void **state)
+{
+	return setup_line(state, "rtu:0");
 }
 
 static int teardown(void **state)
@@ -253,6 +268,34 @@ static void an_absent_unit_on_the_serial_line_is_silent(void **state)
 	link_release(link);
 }
 
+static void a_reply_takes_the_time_of_its_bits(void **state)
+{
+	struct link *link = link_to(*state, 1);
+	static struct link_reply reply;
+	const struct link_request request = {
+	    .unit = 3, .function = LINK_READ_INPUT_REGISTERS, .count = 4};
+	transact(link, &request, &reply);
+	assert_int_equal(reply.status, LINK_OK);
+	/* 8 characters there, 3.5 of silence, 13 back, of 11 bits (Modbus over Serial Line
+	 * V1.02, 2.5.1). */
+	double least = 24.5 * 11 / 1200;
+	assert_true((double)(reply.received_ns - reply.sent_ns) / 1e9 >= least);
+	link_release(link);
+}
+
+static void a_line_that_is_not_slowed_answers_too(void **state)
+{
+	struct link *link = link_to(*state, 1);
+	static struct link_reply reply;
+	const struct link_request request = {
+	    .unit = 3, .function = LINK_READ_INPUT_REGISTERS, .count = 4};
+	for (int i = 0; i < 5; i++) {
+		transact(link, &request, &reply);
+		assert_int_equal(reply.status, LINK_OK);
+	}
+	link_release(link);
+}
+
 /* ---- other clients ----------------------------------------------------- */
 
 static void another_implementation_reads_and_writes(void **state)
@@ -395,6 +438,9 @@ int main(void)
 	    cmocka_unit_test_setup_teardown(refusals_and_identification_come_over_both, setup,
 	                                    teardown),
 	    cmocka_unit_test_setup_teardown(an_absent_unit_on_the_serial_line_is_silent, setup,
+	                                    teardown),
+	    cmocka_unit_test_setup_teardown(a_reply_takes_the_time_of_its_bits, setup_slow, teardown),
+	    cmocka_unit_test_setup_teardown(a_line_that_is_not_slowed_answers_too, setup_unpaced,
 	                                    teardown),
 	    cmocka_unit_test_setup_teardown(another_implementation_reads_and_writes, setup, teardown),
 	    cmocka_unit_test_setup_teardown(requests_in_odd_segments_are_each_answered, setup,
