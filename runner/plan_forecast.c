@@ -439,8 +439,16 @@ static double in_degrees(const struct forecast_case *c, int channel)
 	return c->timing->rig->infos[channel].unit->scale * 180 / PI;
 }
 
+/*
+ * The window is proven steady where t sqrt(12 / n) times the noise is below a
+ * quarter of the tolerance (the standard error of a drift over n rows). With
+ * fewer than STEADY_ROWS rows noise above a sixth of the tolerance spoils it.
+ */
+enum { STEADY_ROWS = 24 };
+
+/* Noise of the rows as an earlier run shows it, U of a mean over the window in *ret_noise. */
 static bool angle_facts(const struct forecast_case *c, const char *key, struct facts *f,
-                        struct forecast *ret)
+                        double *ret_noise, struct forecast *ret)
 {
 	double seconds;
 	bool certain;
@@ -448,63 +456,93 @@ static bool angle_facts(const struct forecast_case *c, const char *key, struct f
 	*f = facts_of(c, channel, 0);
 	f->a *= in_degrees(c, channel);
 	f->q *= in_degrees(c, channel);
-	return window_seconds(c, window_of(c->use), &seconds, &certain, ret) &&
-	       (!certain || enough(ret, seconds, f, 5, "in the window"));
+	*ret_noise = 0;
+	if (!window_seconds(c, window_of(c->use), &seconds, &certain, ret))
+		return false;
+	if (!certain)
+		return true;
+	if (!enough(ret, seconds, f, 5, "in the window"))
+		return false;
+	double rows = fmax(rows_in(seconds, f), 1);
+	if (!isnan(c->known_spread))
+		*ret_noise = 2 * c->known_spread / sqrt(rows);
+	if (rows < STEADY_ROWS && !ret->chance) {
+		ret->chance = true;
+		(void)snprintf(ret->why, sizeof ret->why,
+		               "%g samples in the window prove it steady only where there is little noise",
+		               rows);
+	}
+	return true;
+}
+
+/*
+ * The current at which an angle will be measured is a guess, and its limits of
+ * error go with one over the current: a tenth is added, half is sure.
+ */
+static void put_angle(double system, double rounding, double noise, struct forecast *ret)
+{
+	same_all(ret, 1.1 * sqrt(system * system + rounding * rounding + noise * noise) + noise,
+	         0.5 * system);
 }
 
 static void angle_mean(const struct forecast_case *c, double value, struct forecast *ret)
 {
 	struct facts f;
-	if (!angle_facts(c, "channel", &f, ret))
-		return;
+	double noise;
 	(void)value;
-	double system = 2 * f.a / sqrt(3);
-	same_all(ret, sqrt(system * system + f.q * f.q / 3) + noise_of(c, system), 0);
+	if (!angle_facts(c, "channel", &f, &noise, ret))
+		return;
+	put_angle(2 * f.a / sqrt(3), f.q / sqrt(3), noise, ret);
 	ret->formula = "U of a mean: 2 sqrt(a^2 / 3 + (q/2)^2 / 3); at half the rated current";
 }
 
 static void angle_spread(const struct forecast_case *c, double value, struct forecast *ret)
 {
 	struct facts f;
-	if (!angle_facts(c, "channel", &f, ret))
+	double noise;
+	if (!angle_facts(c, "channel", &f, &noise, ret))
 		return;
-	(void)value;
-	same_all(ret, 2 * f.q / sqrt(12) + noise_of(c, 0), 0);
-	ret->formula = "U = 2 q / sqrt(12), and noise that an earlier run showed";
+	/* The relative uncertainty of a standard deviation of n rows is 1 / sqrt(2 n); U is twice that,
+	 * and the value itself scatters as much. */
+	same_all(ret, 2 * f.q / sqrt(12) + 2 * noise / sqrt(2) + 0.1 * value, 0);
+	ret->formula = "U = 2 sqrt(q^2 / 12 + s^2 / (2 n))";
 }
 
 static void angle_worst(const struct forecast_case *c, double value, struct forecast *ret)
 {
 	struct facts f;
-	if (!angle_facts(c, "channel", &f, ret))
+	double noise;
+	if (!angle_facts(c, "channel", &f, &noise, ret))
 		return;
-	(void)value;
-	same_all(ret, f.a + f.q / 2 + noise_of(c, f.a + f.q / 2), 0);
-	ret->formula = "limits of error of a row: a + q / 2; at half the rated current";
+	/* An extreme of noisy rows does not come again: it is taken to vary by half. */
+	ret->up = f.a + f.q / 2 + 0.5 * value;
+	ret->down = f.a + f.q / 2 + 0.5 * value;
+	ret->formula = "limits of error of a row a + q / 2, and half of the value for noise";
 }
 
 static void torque_lost(const struct forecast_case *c, double value, struct forecast *ret)
 {
 	struct facts f;
-	if (!angle_facts(c, "channel", &f, ret))
+	double noise;
+	if (!angle_facts(c, "channel", &f, &noise, ret))
 		return;
 	double system = 2 * f.a / sqrt(3);
-	double wide = sqrt(system * system + f.q * f.q / 3) * PI / 180;
+	double wide = (1.1 * sqrt(system * system + f.q * f.q / 3) + 2 * noise) * PI / 180;
 	double error = acos(fmax(1 - value / 100, -1));
-	ret->up = 100 * (cos(error) - cos(fmin(error + wide, PI))) + noise_of(c, 0);
-	ret->down = 100 * (cos(fmax(error - wide, 0)) - cos(error)) + noise_of(c, 0);
+	ret->up = 100 * (cos(error) - cos(fmin(error + wide, PI)));
+	ret->down = 100 * (cos(fmax(error - wide, 0)) - cos(error));
 	ret->formula = "1 - cos(error + U)";
 }
 
 static void frame_offset(const struct forecast_case *c, double value, struct forecast *ret)
 {
 	struct facts own, bench;
+	double noise;
 	(void)value;
-	if (!angle_facts(c, "own", &own, ret) || !angle_facts(c, "bench", &bench, ret))
+	if (!angle_facts(c, "own", &own, &noise, ret) || !angle_facts(c, "bench", &bench, &noise, ret))
 		return;
 	double system = 2 * hypot(own.a, bench.a) / sqrt(3);
-	double rounding = hypot(own.q, bench.q) / sqrt(3);
-	same_all(ret, hypot(system, rounding) + noise_of(c, system), 0);
+	put_angle(system, hypot(own.q, bench.q) / sqrt(3), noise_of(c, 1.1 * system), ret);
 	ret->formula = "both means: 2 sqrt((a1^2 + a2^2) / 3); at half the rated current";
 }
 
@@ -845,7 +883,7 @@ enum { SCAN = 400 };
 static void scan(const struct forecast_case *c, bool from_zero, struct answered *ret)
 {
 	double least = from_zero && isinf(c->limit->min) ? 0 : c->limit->min, most = c->limit->max;
-	bool open_ended = isinf(least) || isinf(most), any = false;
+	bool open_ended = isinf(least) || isinf(most), any = false, possible = false;
 	if (open_ended) { /* one side is far away: only the edge matters */
 		double edge = isinf(least) ? most : least, f_width;
 		forecast_at(c, edge, &ret->forecast);
@@ -861,7 +899,10 @@ static void scan(const struct forecast_case *c, bool from_zero, struct answered 
 	struct forecast f;
 	for (int i = 0; i <= SCAN; i++) {
 		double v = least + (most - least) * i / SCAN;
-		if (!passes(c, v, from_zero, &f))
+		bool pass = passes(c, v, from_zero, &f);
+		possible = possible || (!f.impossible && v + f.up_least <= most &&
+		                        (v - f.down_least >= least || (from_zero && least == 0)));
+		if (!pass)
 			continue;
 		sure++;
 		ret->sure_from = any ? ret->sure_from : v;
@@ -872,7 +913,7 @@ static void scan(const struct forecast_case *c, bool from_zero, struct answered 
 	if (2 * sure > SCAN)
 		ret->answer = ret->forecast.chance ? ANSWER_OPEN : ANSWER_DECIDABLE;
 	else
-		ret->answer = any ? ANSWER_OPEN : ANSWER_UNDECIDABLE;
+		ret->answer = possible ? ANSWER_OPEN : ANSWER_UNDECIDABLE;
 }
 
 void forecast_answer(const struct forecast_case *c, struct answered *ret)

@@ -31,6 +31,7 @@ struct forecast_case {
 	double known;        /* an earlier run's value in the metric's unit; NaN: none */
 	double known_u;      /* and its expanded uncertainty; NaN */
 	double known_rise;   /* rise_time of the same check there, s; NaN */
+	double known_spread; /* spread of the same check there, in its unit; NaN */
 	int64_t interval_ns; /* 0: as planned; else what if samples came so often */
 };
 

@@ -21,23 +21,32 @@ static int no_memory(struct err *reterr)
 
 /* ---- how often what is read ------------------------------------------------------- */
 
-static int64_t on_grid(int64_t round_ns, int64_t period_ns)
+/*
+ * pause_ns: of the round, the silence after its last reply. The worker asks for
+ * the next slot before it has passed, so that it alone costs no slot.
+ */
+static int64_t on_grid(int64_t round_ns, int64_t pause_ns, int64_t period_ns)
 {
 	if (period_ns <= 0)
 		return round_ns;
-	int64_t slots = (round_ns + period_ns - 1) / period_ns;
-	return (slots > 1 ? slots : 1) * period_ns;
+	int64_t slots = (round_ns - pause_ns + period_ns - 1) / period_ns;
+	int64_t grid = (slots > 1 ? slots : 1) * period_ns;
+	return grid > round_ns ? grid : round_ns;
 }
 
+/* A group's blocks one after the other. */
 static void round_of(const struct bench_timing *timing, const struct poll_group *group,
-                     int64_t *usual, int64_t *most)
+                     int64_t *usual, int64_t *most, int64_t *pause)
 {
-	*usual = *most = 0;
+	*usual = *most = *pause = 0;
 	for (size_t b = 0; b < group->count; b++) {
 		const struct link_request *request = &group->blocks[b].request;
-		int64_t one, one_most;
+		int64_t one, one_most, row, row_most;
 		bench_timing_transaction(timing, group->blocks[b].read->device, (int)request->function,
 		                         request->count, &one, &one_most);
+		bench_timing_row(timing, group->blocks[b].read->device, (int)request->function,
+		                 request->count, &row, &row_most);
+		*pause = one - row;
 		*usual += one;
 		*most += one_most;
 	}
@@ -61,14 +70,14 @@ static void take_block(const struct bench_timing *timing, const struct poll_bloc
 static void take_link(const struct bench_timing *timing, const struct poll_plan *plan,
                       struct plan_link *link, struct plan_channel *channels)
 {
-	int64_t usual[GROUPS_MOST], most[GROUPS_MOST], interval[GROUPS_MOST];
+	int64_t usual[GROUPS_MOST], most[GROUPS_MOST], pause[GROUPS_MOST], interval[GROUPS_MOST];
 	double load = 0;
 	for (size_t g = 0; g < plan->group_count; g++) {
 		const struct poll_group *group = &plan->groups[g];
-		round_of(timing, group, &usual[g], &most[g]);
+		round_of(timing, group, &usual[g], &most[g], &pause[g]);
 		link->round_ns += usual[g];
 		link->round_most_ns += most[g];
-		interval[g] = on_grid(usual[g], group->period_ns);
+		interval[g] = on_grid(usual[g], pause[g], group->period_ns);
 		if (group->count > 0)
 			load += (double)usual[g] / (double)interval[g];
 	}
@@ -79,10 +88,10 @@ static void take_link(const struct bench_timing *timing, const struct poll_plan 
 		/* Several groups share the link: too much load stretches all of them. */
 		int64_t busy = load > 1 ? (int64_t)((double)interval[g] * load) : usual[g];
 		int64_t others = link->round_most_ns - most[g];
-		int64_t reach = on_grid(busy, group->period_ns);
+		int64_t reach = on_grid(busy, pause[g], group->period_ns);
 		int64_t reach_most =
-		    on_grid(load > 1 ? busy + most[g] - usual[g] : most[g], group->period_ns) + others +
-		    (most[g] - usual[g]);
+		    on_grid(load > 1 ? busy + most[g] - usual[g] : most[g], pause[g], group->period_ns) +
+		    others + (most[g] - usual[g]);
 		if (link->transactions == 0 || reach < link->reach_ns) {
 			link->transactions = group->count;
 			link->wanted_ns = group->period_ns;
@@ -273,8 +282,10 @@ static int walk(const struct bench_timing *timing, struct arena *arena, struct p
 		return -1;
 	plan->stimulus_ns = walking.at_ns;
 	plan->stimulus_most_ns = walking.at_most_ns;
-	if (walk_steps(&walking, test->restore, test->restore_count) < 0 ||
-	    walk_steps(&walking, rig->safe_state, rig->safe_state_count) < 0)
+	if (walk_steps(&walking, test->restore, test->restore_count) < 0)
+		return -1;
+	int64_t before_rest_most = walking.at_most_ns;
+	if (walk_steps(&walking, rig->safe_state, rig->safe_state_count) < 0)
 		return -1;
 	/* Rest is confirmed: all awaits of the safe state hold once more. */
 	int64_t confirm = 0;
@@ -282,7 +293,7 @@ static int walk(const struct bench_timing *timing, struct arena *arena, struct p
 		if (rig->safe_state[i].kind == STEP_AWAIT && rig->safe_state[i].condition.for_ns > confirm)
 			confirm = rig->safe_state[i].condition.for_ns;
 	plan->whole_ns = walking.at_ns + confirm;
-	plan->whole_most_ns = walking.at_most_ns + rig->rest_within_ns;
+	plan->whole_most_ns = before_rest_most + rig->rest_within_ns;
 	return 0;
 }
 
@@ -321,7 +332,7 @@ int plan_reach_alone(const struct bench_timing *timing, const struct test *test,
 	struct test alone = *test;
 	struct test_plan plan = {0};
 	unsigned char *needed = arena_alloc(arena, rig->channel_count + 1);
-	int64_t most;
+	int64_t most, pause;
 	if (!group.channels || !needed)
 		return no_memory(reterr);
 	memcpy(group.channels, channels, count * sizeof(int));
@@ -329,6 +340,6 @@ int plan_reach_alone(const struct bench_timing *timing, const struct test *test,
 	alone.group_count = 1;
 	if (test_plan_make(rig, &alone, needed, arena, &plan, reterr) < 0)
 		return -1;
-	round_of(timing, &plan.plans[link].groups[0], ret_ns, &most);
+	round_of(timing, &plan.plans[link].groups[0], ret_ns, &most, &pause);
 	return 0;
 }

@@ -109,6 +109,7 @@ static void take_known(const json_t *known, struct forecast_case *c)
 	c->known = metric_number(check, metric, "value");
 	c->known_u = metric_number(check, metric, "uncertainty");
 	c->known_rise = metric_number(check, "rise_time", "value");
+	c->known_spread = metric_number(check, "spread", "value");
 }
 
 /* ---- the plan ------------------------------------------------------------------------- */
@@ -140,7 +141,8 @@ static int plan_limits(struct plan *plan, struct plan_row *row, const json_t *kn
 			                            .limit = &test->checks[c].limits[l],
 			                            .known = NAN,
 			                            .known_u = NAN,
-			                            .known_rise = NAN};
+			                            .known_rise = NAN,
+			                            .known_spread = NAN};
 			if (known)
 				take_known(known, &one);
 			*limit = (struct plan_limit){.use = one.use, .limit = one.limit, .known = one.known};
