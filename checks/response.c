@@ -96,6 +96,22 @@ static bool crossing_at(const struct response *response, double part, double *re
 	return ret_crossing->found;
 }
 
+void response_pace(struct response *response)
+{
+	struct measured unused;
+	struct crossing low, high;
+	double level_u, level;
+	response->rise = response->busy_until = 0;
+	if (!crossing_at(response, 0.1, &level_u, &level, &low, &unused) ||
+	    !crossing_at(response, 0.9, &level_u, &level, &high, &unused))
+		return;
+	response->rise = fmax(high.high - low.low + high.low - low.high, 1e-9) / 2;
+	response->busy_until = high.high + 3 * (high.high - low.low);
+	int64_t surely = (int64_t)((high.low - low.high) * 1e9);
+	if (surely / 2 < response->gap_most)
+		response->gap_most = surely / 2 > 1 ? surely / 2 : 1;
+}
+
 void response_crossing(const struct response *response, double part, struct measured *ret)
 {
 	*ret = (struct measured){0};
@@ -236,7 +252,41 @@ static void never_settled(const struct response *response, const struct settling
 	               last);
 }
 
+/* s: the end of the last gap in which the answer may have left the band unseen; 0: there is none.
+ */
+static double hidden_until(const struct response *response)
+{
+	const struct stretch *rows = &response->rows;
+	double end = 0;
+	for (size_t row = 0; row + 1 < rows->count; row++) {
+		size_t at = rows->first + row;
+		if (stretch_time(rows, row) > response->busy_until)
+			break;
+		if (series_received(rows->series, at + 1) - series_received(rows->series, at) >
+		    response->gap_most)
+			end = (double)(series_latest(rows->series, at + 1) - rows->origin_ns) / 1e9;
+	}
+	return end;
+}
+
+static void settle(const struct response *response, double band, struct measured *ret);
+
 void response_settling(const struct response *response, double band, struct measured *ret)
+{
+	settle(response, band, ret);
+	double hidden = hidden_until(response) + response->mark_half;
+	if (!ret->known || !(hidden > ret->high))
+		return;
+	ret->high = hidden;
+	ret->at_high = hidden;
+	(void)snprintf(
+	    ret->why, sizeof ret->why,
+	    "widened to %.4g s: samples are missing until then, and the answer may have left "
+	    "the band",
+	    hidden);
+}
+
+static void settle(const struct response *response, double band, struct measured *ret)
 {
 	*ret = (struct measured){.level = response->final};
 	struct settling settling = {.band = band * response->hundred};

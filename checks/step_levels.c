@@ -126,6 +126,7 @@ bool step_levels(struct step_work *work)
 		               work->channel->name);
 		return false;
 	}
+	response_pace(response);
 	return true;
 }
 
