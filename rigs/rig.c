@@ -43,6 +43,7 @@ static const struct field ROWS[] = {
 	{.key = "safe_state", .kind = FIELD_OWN, .text = "steps that bring the bench to rest and confirm it"},
 	{.key = "direction", .kind = FIELD_OWN, .text = "how the signs of command and instruments are proven first"},
 	{.key = "attempts", .kind = FIELD_OWN, .text = "what a test may try although it must be refused"},
+	{.key = "parameters", .kind = FIELD_OWN, .text = "file beside this one with the values that the drive must have: CHANNEL: VALUE"},
 	{.key = "model", .kind = FIELD_OWN, .text = "what the modelled bench serves; only for rehearse and serve"},
 };
 /* clang-format on */
@@ -181,7 +182,7 @@ static const struct {
     {"before", rig_before_load},     {"interlocks", rig_interlocks_load},
     {"attempts", rig_attempts_load}, {"safe_state", rig_safe_state_load},
     {"devices", rig_devices_finish}, {"direction", rig_directions_load},
-    {"model", rig_model_load},
+    {"parameters", rig_parameters_load}, {"model", rig_model_load},
 };
 
 /* The infos once more, side by side, as checks want them. */

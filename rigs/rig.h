@@ -102,6 +102,12 @@ struct allowed_attempt { /* attempts: what `attempt` may do */
 	bool moving; /* allowed while the shaft may turn */
 };
 
+struct expected_parameter {
+	int channel;
+	double value; /* in the channel's unit */
+	struct position at;
+};
+
 struct served_channel {
 	int channel;
 	const char *signal;
@@ -132,6 +138,11 @@ struct rig {
 	size_t direction_count;
 	struct allowed_attempt *attempts;
 	size_t attempt_count;
+	/* parameters: what the drive must hold before and after a run */
+	const char *parameters_name; /* of the file beside the rig file; NULL: none */
+	const struct yaml_file *parameters_file;
+	struct expected_parameter *parameters;
+	size_t parameter_count;
 	/* model: */
 	bool has_model;
 	struct served_channel *served;

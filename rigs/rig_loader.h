@@ -32,6 +32,7 @@ int rig_interlocks_load(struct rig_loader *loader, const struct yaml_node *node)
 int rig_safe_state_load(struct rig_loader *loader, const struct yaml_node *node);
 int rig_directions_load(struct rig_loader *loader, const struct yaml_node *node);
 int rig_attempts_load(struct rig_loader *loader, const struct yaml_node *node);
+int rig_parameters_load(struct rig_loader *loader, const struct yaml_node *node);
 int rig_model_load(struct rig_loader *loader, const struct yaml_node *node);
 
 /* What a channel says and one field holds; the rest is read from its node. */

@@ -73,6 +73,7 @@ struct session {
 	bool (*is_cut)(void *context, int link, int64_t at_ns);
 	void *is_cut_context;
 	struct link **links;
+	struct link_reply reply; /* of requests before and after the run */
 	struct stop stop;
 	struct conductor *conductor;
 	struct run_facts facts;
@@ -103,10 +104,15 @@ int session_finish(struct session *session);
 /* The bench is proven once a run, by the first suite: the others lose their bench tests. */
 void session_drop_bench_tests(struct suite *suite);
 /*
- * After the threads have ended: reads the identities again. False, with a
- * sentence in why, where one is not what it was before the run.
+ * Before the first command: reads identities and parameters, and adds a fault
+ * for each that is not what suite or rig expect. Errors: ERR_LINK, ERR_NOMEM.
  */
-bool session_identity_same(struct session *session, char *why, size_t size);
+int session_identify(struct session *session, struct err *err);
+/*
+ * After the threads have ended: reads them again. False, with a sentence in
+ * why, where one is not what it was before the run.
+ */
+bool session_drive_same(struct session *session, char *why, size_t size);
 /* Judges one bench test from what was recorded so far; for the gates. */
 void session_answer_gate(struct session *session);
 void session_print_error(const struct err *err);

@@ -57,6 +57,10 @@ static int write_sources(struct session *session, struct err *err)
 	const struct yaml_file *rig = session->rig->file;
 	if (run_folder_write(&session->folder, "rig.yaml", rig->bytes, rig->length, err) < 0)
 		return -1;
+	const struct yaml_file *parameters = session->rig->parameters_file;
+	if (parameters && run_folder_write(&session->folder, session->rig->parameters_name,
+	                                   parameters->bytes, parameters->length, err) < 0)
+		return -1;
 	for (size_t i = 0; i < session->suite_count; i++) {
 		char name[32] = "suite.yaml";
 		const struct yaml_file *suite = session->suites[i]->file;
@@ -158,7 +162,7 @@ static int end_journal(struct session *session, struct err *err)
 	event.time_ns = clock_now(&session->clock);
 	event.kind = JOURNAL_ABORT;
 	if (!stop_raised(&session->stop) &&
-	    !session_identity_same(session, event.text, sizeof event.text) &&
+	    !session_drive_same(session, event.text, sizeof event.text) &&
 	    journal_write(session->journal, &event, err) < 0)
 		result = -1;
 	event.kind = JOURNAL_RUN_END;

@@ -124,7 +124,9 @@ static int copy_file(const char *folder, const char *name, const struct run_fold
 
 static bool is_recorded(const char *name)
 {
-	return strcmp(name, "rig.yaml") == 0 || strcmp(name, "journal.jsonl") == 0 ||
+	size_t length = strlen(name);
+	return (length >= 15 && strcmp(name + length - 15, "parameters.yaml") == 0) ||
+	       strcmp(name, "rig.yaml") == 0 || strcmp(name, "journal.jsonl") == 0 ||
 	       (strncmp(name, "suite", 5) == 0 && strstr(name, ".yaml"));
 }
 
