@@ -199,6 +199,12 @@ static void value_range(const struct chart *chart, size_t panel, double *ret_low
 			take(metric->limits[l].limit->max, &low, &high);
 		}
 	}
+	struct chart_step step;
+	if (panel == 0 && chart->primary && chart_step_find(chart->check, &step)) {
+		take(step.final - step.band, &low, &high);
+		take(step.final + step.band, &low, &high);
+		take(step.overshoot_most, &low, &high);
+	}
 	if (!isfinite(low)) {
 		low = 0;
 		high = 1;
@@ -208,6 +214,42 @@ static void value_range(const struct chart *chart, size_t panel, double *ret_low
 		air = fmax(fabs(high) * 0.1, info->resolution > 0 ? info->resolution : 0.5);
 	*ret_low = low - air;
 	*ret_high = high + air;
+}
+
+/* An area in which a limit is broken: hatched, so that it is seen without colours too. */
+static void outside(const struct chart *chart, double x1, double y1, double x2, double y2)
+{
+	char fill[112];
+	if (x2 <= x1 || y2 <= y1)
+		return;
+	(void)snprintf(fill, sizeof fill, "url(#%s-out)", chart->id);
+	chart_rectangle(chart->out, x1, y1, x2 - x1, y2 - y1, fill, "0.6");
+}
+
+/* The band of the settling time and the overshoot that is allowed, where the step is known. */
+static void step_bands(const struct chart *chart, const struct chart_scale *scale)
+{
+	const struct mark *mark = mark_of_field(chart);
+	struct chart_step step;
+	if (!chart->primary || !mark || !chart_step_find(chart->check, &step))
+		return;
+	double x0 = fmin(fmax(chart_x(scale, (double)mark->latest_ns), scale->x0), scale->x1);
+	double y1 = chart_y(scale, step.final + step.band), y2 = chart_y(scale, step.final - step.band);
+	if (step.band > 0) {
+		chart_rectangle(chart->out, x0, y1, scale->x1 - x0, y2 - y1, "#6f9aa8", "0.25");
+		chart_line(chart->out, x0, y1, scale->x1, y1, "#6f9aa8", NULL);
+		chart_line(chart->out, x0, y2, scale->x1, y2, "#6f9aa8", NULL);
+	}
+	if (isnan(step.overshoot_most))
+		return;
+	double y = chart_y(scale, step.overshoot_most);
+	if (step.sign > 0)
+		outside(chart, x0, scale->y_high, scale->x1, y);
+	else
+		outside(chart, x0, y, scale->x1, scale->y_low);
+	chart_line(chart->out, x0, y, scale->x1, y, "#9b2335", "2 3");
+	chart_label(chart->out, scale->x1 - 4, step.sign > 0 ? y - 4 : y + 11, "end", "#9b2335",
+	            "overshoot at most");
 }
 
 static void limit_lines(const struct chart *chart, const struct chart_scale *scale)
@@ -228,6 +270,8 @@ static void limit_lines(const struct chart *chart, const struct chart_scale *sca
 				               i == 0 ? "at least" : "at most");
 				if (level) {
 					double y = chart_y(scale, values[i]);
+					outside(chart, scale->x0, i == 0 ? y : scale->y_high, scale->x1,
+					        i == 0 ? scale->y_low : y);
 					chart_line(chart->out, scale->x0, y, scale->x1, y, "#9b2335", "2 3");
 					chart_label(chart->out, scale->x1 - 4, i == 0 ? y + 11 : y - 4, "end",
 					            "#9b2335", text);
@@ -236,8 +280,12 @@ static void limit_lines(const struct chart *chart, const struct chart_scale *sca
 				double x = chart_x(scale, (double)mark->latest_ns + values[i] * 1e9);
 				if (x < scale->x0 || x > scale->x1)
 					continue;
+				if (i == 1)
+					outside(chart, x, scale->y_low - 7, scale->x1, scale->y_low);
 				chart_line(chart->out, x, scale->y_high, x, scale->y_low, "#9b2335", "2 3");
-				chart_label(chart->out, x + 3, scale->y_low - 4 - 12.0 * (double)(m % 4), "start",
+				bool right = x > (scale->x0 + scale->x1) / 2;
+				chart_label(chart->out, right ? x - 3 : x + 3,
+				            scale->y_low - 10 - 12.0 * (double)(m % 4), right ? "end" : "start",
 				            "#9b2335", text);
 			}
 		}
@@ -325,9 +373,11 @@ static void panel(const struct chart *chart, size_t index, double top)
 	value_range(chart, index, &scale.low, &scale.high);
 	bad_bands(chart, &scale, series);
 	chart_y_axis(chart, &scale, info);
-	mark_bands(chart, &scale, index == 0);
-	if (index == 0)
+	if (index == 0) {
+		step_bands(chart, &scale);
 		limit_lines(chart, &scale);
+	}
+	mark_bands(chart, &scale, index == 0);
 	bool commanded = false;
 	for (size_t c = 0; c < chart->rig->channel_count; c++)
 		if (chart->rig->channels[c].command && same_quantity(&chart->rig->infos[c], info)) {
@@ -337,7 +387,7 @@ static void panel(const struct chart *chart, size_t index, double top)
 			               chart->rig->infos[c].unit->scale / info->unit->scale, &scale);
 		}
 	chart_curve(chart->out, series, &scale, chart->columns, 5 * every);
-	if (index == 0)
+	if (index == 0 && chart_event_count(chart) == 0)
 		metric_points(chart, &scale);
 	chart_line(chart->out, scale.x0, scale.y_low, scale.x1, scale.y_low, "#3a3833", NULL);
 	chart_line(chart->out, scale.x0, scale.y_low, scale.x0, scale.y_high, "#3a3833", NULL);
@@ -352,15 +402,21 @@ static void caption(const struct chart *chart)
 {
 	int count = 0;
 	xml_open(chart->out, "figcaption");
-	xml_textf(chart->out, "%.64s. Grey: marks with their interval. Dotted: limits.",
-	          chart->check->use->name);
+	xml_textf(chart->out,
+	          "%.64s. Grey: marks with their interval. Dotted and hatched: "
+	          "limits and what lies outside.%s",
+	          chart->check->use->name,
+	          chart_step_find(chart->check, &(struct chart_step){0})
+	              ? " Blue-grey band: where the answer counts as settled."
+	              : "");
 	if (chart->t0_ns > chart->test->recorded->begin_ns ||
 	    chart->t1_ns < chart->test->recorded->end_ns)
 		xml_textf(chart->out, " A part of the stimulus, which took %.4g %s.",
 		          (double)(chart->test->recorded->end_ns - chart->test->recorded->begin_ns) *
 		              chart->t_factor,
 		          chart->t_unit);
-	for (size_t m = 0; m < chart->check->metric_count; m++) {
+	size_t metrics = chart_event_count(chart) ? 0 : chart->check->metric_count;
+	for (size_t m = 0; m < metrics; m++) {
 		const struct metric *metric = &chart->check->metrics[m].metric;
 		for (size_t p = 0; p < metric->point_count && count < POINTS_MOST; p++) {
 			const struct metric_point *point = &metric->points[p];
@@ -396,26 +452,20 @@ void chart_write(struct xml_out *out, const struct rig *rig, const struct test_r
 		return;
 	find_channels(&chart);
 	find_times(&chart);
+	char title[320];
+	double top = TOP + EVENT_HEIGHT * (double)chart_event_count(&chart);
 	double bottom =
-	    TOP + HEIGHT * (double)chart.panel_count + GAP * (double)(chart.panel_count - 1);
+	    top + HEIGHT * (double)chart.panel_count + GAP * (double)(chart.panel_count - 1);
 	xml_open(out, "figure");
-	xml_open(out, "svg");
-	xml_attr(out, "xmlns", "http://www.w3.org/2000/svg");
-	xml_attr(out, "role", "img");
-	xml_attrf(out, "aria-labelledby", "%s-title", id);
-	xml_attrf(out, "viewBox", "0 0 %.0f %.0f", CHART_WIDTH, bottom + BOTTOM);
-	xml_attrf(out, "width", "%.0f", CHART_WIDTH);
-	xml_attrf(out, "height", "%.0f", bottom + BOTTOM);
-	xml_attr(out, "font-family", "system-ui, sans-serif");
-	xml_attr(out, "font-size", "11");
-	xml_open(out, "title");
-	xml_attrf(out, "id", "%s-title", id);
-	xml_textf(out, "%s of test %s: %s over time", check->use->name, test->test->name,
-	          rig->infos[chart.channels[0]].name);
-	xml_close(out);
-	chart_rectangle(out, 0, 0, CHART_WIDTH, bottom + BOTTOM, "#fbfaf5", NULL);
+	if (chart_polar_possible(&chart))
+		chart_polar(&chart);
+	(void)snprintf(title, sizeof title, "%.60s of test %.120s: %.60s over time", check->use->name,
+	               test->test->name, rig->infos[chart.channels[0]].name);
+	chart_begin(out, id, bottom + BOTTOM, title);
+	chart_hatching(out, id);
 	for (size_t i = 0; i < chart.panel_count; i++)
-		panel(&chart, i, TOP - 14 + (HEIGHT + GAP) * (double)i);
+		panel(&chart, i, top - 14 + (HEIGHT + GAP) * (double)i);
+	chart_events(&chart, 8, bottom - 14);
 	chart_x_axis(&chart, bottom - 14);
 	xml_close(out);
 	caption(&chart);

@@ -77,6 +77,34 @@ void chart_y_axis(const struct chart *chart, const struct chart_scale *scale,
                   const struct channel_info *info);
 void chart_x_axis(const struct chart *chart, double bottom);
 
+/* A drawing of that height: its root element, title and panel. `id` is unique in the page. */
+void chart_begin(struct xml_out *out, const char *id, double height, const char *title);
+/* A hatching that can be named as "url(#ID-out)": what lies outside a limit. */
+void chart_hatching(struct xml_out *out, const char *id);
+
+/* ---- chart_step.c: what a step response has besides ------------------------- */
+
+/* The levels of a step, from where its metrics lie. */
+struct chart_step {
+	double final, hundred, band; /* band: half its width, same unit; 0: not known */
+	double sign;                 /* +1: upwards */
+	double overshoot_most;       /* level of the limit; NaN: none */
+};
+bool chart_step_find(const struct check_result *check, struct chart_step *ret_step);
+
+/* ---- chart_polar.c: angles round the rotor ---------------------------------- */
+
+bool chart_polar_possible(const struct chart *chart);
+void chart_polar(const struct chart *chart);
+
+/* ---- chart_events.c: what happened when, one line each ---------------------- */
+
+/* How many lines; 0: this check has no use for them. */
+size_t chart_event_count(const struct chart *chart);
+enum { EVENT_HEIGHT = 19 };
+/* From `top` downwards, over the time axis of the chart; bottom: where the panels end. */
+void chart_events(const struct chart *chart, double top, double bottom);
+
 /* ---- chart_curve.c: one polyline after another ---------------------------- */
 
 /* gap_ns: neighbours further apart are not joined; 0: all are. */

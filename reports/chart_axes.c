@@ -46,6 +46,37 @@ void chart_label(struct xml_out *out, double x, double y, const char *anchor, co
 	xml_close(out);
 }
 
+void chart_begin(struct xml_out *out, const char *id, double height, const char *title)
+{
+	xml_open(out, "svg");
+	xml_attr(out, "xmlns", "http://www.w3.org/2000/svg");
+	xml_attr(out, "role", "img");
+	xml_attrf(out, "aria-labelledby", "%s-title", id);
+	xml_attrf(out, "viewBox", "0 0 %.0f %.0f", CHART_WIDTH, height);
+	xml_attrf(out, "width", "%.0f", CHART_WIDTH);
+	xml_attrf(out, "height", "%.0f", height);
+	xml_attr(out, "font-family", "system-ui, sans-serif");
+	xml_attr(out, "font-size", "11");
+	xml_open(out, "title");
+	xml_attrf(out, "id", "%s-title", id);
+	xml_text(out, title);
+	xml_close(out);
+	chart_rectangle(out, 0, 0, CHART_WIDTH, height, "#fbfaf5", NULL);
+}
+
+void chart_hatching(struct xml_out *out, const char *id)
+{
+	xml_open(out, "pattern");
+	xml_attrf(out, "id", "%s-out", id);
+	xml_attr(out, "width", "7");
+	xml_attr(out, "height", "7");
+	xml_attr(out, "patternUnits", "userSpaceOnUse");
+	xml_attr(out, "patternTransform", "rotate(45)");
+	chart_rectangle(out, 0, 0, 7, 7, "#fbe4e0", NULL);
+	chart_rectangle(out, 0, 0, 2, 7, "#d99a93", NULL);
+	xml_close(out);
+}
+
 /* 1, 2 or 5 times a power of ten, so that at most `most` ticks fit into the span. */
 static double tick_step(double span, int most)
 {

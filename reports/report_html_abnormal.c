@@ -156,8 +156,9 @@ static bool without_accuracy(struct xml_out *out, const struct run_result *run)
 	for (size_t i = 0; rig && i < rig->channel_count; i++) {
 		const struct channel_info *info = &rig->infos[i];
 		bool judged = false;
-		if (info->evidence != EVIDENCE_INDEPENDENT || info->accuracy.given || info->name_count ||
-		    info->unit == unit_one() || rig->channels[i].device < 0)
+		if (rig->channels[i].command || info->evidence != EVIDENCE_INDEPENDENT ||
+		    info->accuracy.given || info->name_count || info->unit == unit_one() ||
+		    rig->channels[i].device < 0)
 			continue;
 		for (size_t s = 0; s < run->suite_count && !judged; s++)
 			for (size_t t = 0; t < run->suites[s].test_count && !judged; t++)
@@ -182,7 +183,8 @@ static const char *better_witness(const struct rig *rig, int channel)
 	if (!rig || channel < 0 || (size_t)channel >= rig->channel_count)
 		return NULL;
 	const struct channel_info *info = &rig->infos[channel];
-	if (info->name_count || info->unit == unit_one() || info->evidence == EVIDENCE_INDEPENDENT)
+	if (rig->channels[channel].command || info->name_count || info->unit == unit_one() ||
+	    info->evidence == EVIDENCE_INDEPENDENT)
 		return NULL;
 	for (size_t i = 0; i < rig->channel_count; i++)
 		if (rig->infos[i].evidence == EVIDENCE_INDEPENDENT && !rig->channels[i].command &&

@@ -70,20 +70,6 @@ static const char *shade(double margin, char buffer[8])
 	return buffer;
 }
 
-static void hatching(const struct sweep *sweep)
-{
-	struct xml_out *out = sweep->out;
-	xml_open(out, "pattern");
-	xml_attrf(out, "id", "%s-out", sweep->id);
-	xml_attr(out, "width", "7");
-	xml_attr(out, "height", "7");
-	xml_attr(out, "patternUnits", "userSpaceOnUse");
-	xml_attr(out, "patternTransform", "rotate(45)");
-	chart_rectangle(out, 0, 0, 7, 7, "#fbe4e0", NULL);
-	chart_rectangle(out, 0, 0, 2, 7, "#d99a93", NULL);
-	xml_close(out);
-}
-
 static const char *fill_of(const struct sweep *sweep, const struct test_result *test, double margin,
                            char buffer[80])
 {
@@ -152,22 +138,11 @@ static const struct test_result *at_point(const struct sweep *sweep, const char 
 
 static void svg_open(const struct sweep *sweep, double height)
 {
-	struct xml_out *out = sweep->out;
-	xml_open(out, "svg");
-	xml_attr(out, "xmlns", "http://www.w3.org/2000/svg");
-	xml_attr(out, "role", "img");
-	xml_attrf(out, "aria-labelledby", "%s-title", sweep->id);
-	xml_attrf(out, "viewBox", "0 0 %.0f %.0f", CHART_WIDTH, height);
-	xml_attrf(out, "width", "%.0f", CHART_WIDTH);
-	xml_attrf(out, "height", "%.0f", height);
-	xml_attr(out, "font-family", "system-ui, sans-serif");
-	xml_attr(out, "font-size", "11");
-	xml_open(out, "title");
-	xml_attrf(out, "id", "%s-title", sweep->id);
-	xml_textf(out, "%.100s: least margin at each point of the sweep", sweep->base);
-	xml_close(out);
-	chart_rectangle(out, 0, 0, CHART_WIDTH, height, "#fbfaf5", NULL);
-	hatching(sweep);
+	char title[200];
+	(void)snprintf(title, sizeof title, "%.100s: least margin at each point of the sweep",
+	               sweep->base);
+	chart_begin(sweep->out, sweep->id, height, title);
+	chart_hatching(sweep->out, sweep->id);
 }
 
 static void map(const struct sweep *sweep)

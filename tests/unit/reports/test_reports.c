@@ -77,6 +77,68 @@ static void rest_that_was_not_confirmed_stands_before_the_verdict(void **state)
 	synthetic_release(&made);
 }
 
+static size_t count_of(const char *text, const char *word)
+{
+	size_t count = 0;
+	for (const char *at = text; (at = strstr(at, word)); at += strlen(word))
+		count++;
+	return count;
+}
+
+static void what_was_abnormal_stands_before_what_was_run(void **state)
+{
+	(void)state;
+	struct synthetic made;
+	synthetic_make(&made, "[speed=1000rpm,load=1.2Nm]", "text");
+	struct run_event events[] = {
+	    {RUN_EVENT_LINK, "drive_wire", "the reply was garbled", NS_PER_S, 3 * NS_PER_S, 4},
+	    {RUN_EVENT_INTERLOCK, "speed", "speed is 3700 rpm", NS_PER_S, NS_PER_S, 1},
+	    {RUN_EVENT_REST, "", "speed stayed above 10 rpm", NS_PER_S, NS_PER_S, 1},
+	};
+	made.run.facts.events = events;
+	made.run.facts.event_count = 3;
+	char *html = html_of(&made.run, "abnormal", NULL);
+	const char *what = strstr(html, "What was run"), *failed = strstr(html, "What did not pass");
+	static const char *const expected[] = {"the reply was garbled (4 times",
+	                                       "speed is 3700 rpm",
+	                                       "speed stayed above 10 rpm",
+	                                       "rest on what the device under test says of itself",
+	                                       "partial: ",
+	                                       "values overridden"};
+	assert_non_null(what);
+	assert_non_null(failed);
+	for (size_t i = 0; i < sizeof expected / sizeof *expected; i++) {
+		const char *at = strstr(html, expected[i]);
+		assert_non_null(at);
+		assert_true(at < what);
+	}
+	/* The failed limit has its picture beside it, once. */
+	assert_non_null(strstr(failed, "id=\"t0-1-c0-title\""));
+	assert_int_equal(count_of(html, "id=\"t0-1-c0-title\""), 1);
+	assert_true(strstr(failed, "id=\"t0-1-c0-title\"") < strstr(html, "All tests"));
+	assert_non_null(strstr(html, "SPD-01[<wbr/>speed=1000rpm,<wbr/>load=1.2Nm]"));
+	free(html);
+	synthetic_release(&made);
+}
+
+static void a_requirement_has_the_worst_verdict_of_its_tests(void **state)
+{
+	(void)state;
+	struct synthetic made;
+	synthetic_make(&made, "", "text");
+	char *html = html_of(&made.run, "requirements", NULL);
+	const char *table = strstr(html, ">Requirements</h2>");
+	assert_non_null(table);
+	const char *row = strstr(table, "SRS-112");
+	assert_non_null(row);
+	const char *end = strstr(row, "</tr>"), *verdict = strstr(row, "class=\"verdict fail\"");
+	assert_non_null(verdict);
+	assert_true(verdict < end);
+	assert_non_null(strstr(row, "but 1 of 6 tests not run"));
+	free(html);
+	synthetic_release(&made);
+}
+
 static void a_run_that_was_aborted_before_its_first_test_has_its_reports(void **state)
 {
 	(void)state;
@@ -104,14 +166,6 @@ static void a_run_that_was_aborted_before_its_first_test_has_its_reports(void **
 	assert_non_null(strstr(junit, "timestamp=\"1970-01-01T00:00:00\""));
 	free(junit);
 	synthetic_release(&made);
-}
-
-static size_t count_of(const char *text, const char *word)
-{
-	size_t count = 0;
-	for (const char *at = text; (at = strstr(at, word)); at += strlen(word))
-		count++;
-	return count;
 }
 
 static void a_run_of_many_tests_stays_below_ten_megabytes(void **state)
@@ -198,6 +252,8 @@ int main(void)
 	    cmocka_unit_test(a_full_disk_leaves_no_half_report),
 	    cmocka_unit_test(one_report_that_fails_does_not_keep_the_others_away),
 	    cmocka_unit_test(rest_that_was_not_confirmed_stands_before_the_verdict),
+	    cmocka_unit_test(what_was_abnormal_stands_before_what_was_run),
+	    cmocka_unit_test(a_requirement_has_the_worst_verdict_of_its_tests),
 	    cmocka_unit_test(a_run_that_was_aborted_before_its_first_test_has_its_reports),
 	    cmocka_unit_test(a_run_of_many_tests_stays_below_ten_megabytes),
 	    cmocka_unit_test(a_long_record_keeps_its_extremes_in_the_picture),
