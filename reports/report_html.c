@@ -109,23 +109,32 @@ static int chart_columns(const struct run_result *run)
 	return columns > CHART_COLUMNS_MOST ? CHART_COLUMNS_MOST : (int)columns;
 }
 
-static void head(struct xml_out *out, const struct run_result *run)
+void html_begin(struct xml_out *out)
+{
+	xml_raw(out, "<!DOCTYPE html>\n");
+	xml_open(out, "html");
+	out->lines = true;
+	xml_attr(out, "xmlns", "http://www.w3.org/1999/xhtml");
+	xml_attr(out, "lang", "en");
+}
+
+static void meta(struct xml_out *out, const char *name, const char *content)
+{
+	xml_open(out, "meta");
+	xml_attr(out, "name", name);
+	xml_attr(out, "content", content);
+	xml_close_void(out);
+}
+
+void html_head(struct xml_out *out, const char *title)
 {
 	xml_open(out, "head");
 	xml_open(out, "meta");
 	xml_attr(out, "charset", "utf-8");
 	xml_close_void(out);
-	xml_open(out, "meta");
-	xml_attr(out, "name", "viewport");
-	xml_attr(out, "content", "width=device-width, initial-scale=1");
-	xml_close_void(out);
-	xml_open(out, "meta");
-	xml_attr(out, "name", "color-scheme");
-	xml_attr(out, "content", "light dark");
-	xml_close_void(out);
-	xml_elementf(out, "title", NULL, "%s: %s, %zu of %zu tests passed",
-	             run->facts.rig ? run->facts.rig->name : "run", verdict_name(run_verdict(run)),
-	             run->totals.pass, run->totals.tests);
+	meta(out, "viewport", "width=device-width, initial-scale=1");
+	meta(out, "color-scheme", "light dark");
+	xml_element(out, "title", NULL, title);
 	xml_open(out, "link");
 	xml_attr(out, "rel", "stylesheet");
 	xml_attr(out, "href", "report.css");
@@ -140,12 +149,12 @@ static int html_write(const struct run_result *run, const struct run_folder *fol
 	int columns = chart_columns(run);
 	if (xml_out_init(&out, reterr) < 0)
 		return -1;
-	xml_raw(&out, "<!DOCTYPE html>\n");
-	xml_open(&out, "html");
-	out.lines = true;
-	xml_attr(&out, "xmlns", "http://www.w3.org/1999/xhtml");
-	xml_attr(&out, "lang", "en");
-	head(&out, run);
+	char title[320];
+	(void)snprintf(title, sizeof title, "%.150s: %s, %zu of %zu tests passed",
+	               run->facts.rig ? run->facts.rig->name : "run", verdict_name(run_verdict(run)),
+	               run->totals.pass, run->totals.tests);
+	html_begin(&out);
+	html_head(&out, title);
 	xml_open(&out, "body");
 	header(&out, run);
 	xml_open(&out, "main");

@@ -9,6 +9,9 @@
 extern const char report_css[];
 extern const size_t report_css_length;
 
+/* The root element, left open; and the whole <head>. */
+void html_begin(struct xml_out *out);
+void html_head(struct xml_out *out, const char *title);
 /* What was run: rig, suites, devices, instruments, links. */
 void html_identity(struct xml_out *out, const struct run_result *run);
 /* Whether a calibration had ended when the run began. */

@@ -17,9 +17,12 @@ static const struct verb {
     {"plan", "--rig RIG SUITE...", "touch nothing: how long, how often, which limits can be decided",
      verb_plan},
     {"survey", "--rig RIG", "look at a bench, command nothing: identity, values, times", verb_survey},
+    {"schema", "rig|suite|results", "JSON Schema of the files, for editors and programs", verb_schema},
     {"serve", "--rig RIG", "the modelled bench as Modbus servers, in real time", verb_serve},
     {"report", "DIR --out NEW", "rebuild every report from a recorded run, or --verify it",
      verb_report},
+    {"compare", "OLD NEW [NEWER...]", "put the results of runs side by side: what changed, what got worse",
+     verb_compare},
 };
 
 enum { VERB_COUNT = sizeof VERBS / sizeof VERBS[0] };

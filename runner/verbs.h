@@ -9,7 +9,9 @@ int verb_run(int argc, char **argv);
 int verb_rehearse(int argc, char **argv);
 int verb_plan(int argc, char **argv);
 int verb_survey(int argc, char **argv);
+int verb_schema(int argc, char **argv);
 int verb_serve(int argc, char **argv);
 int verb_report(int argc, char **argv);
+int verb_compare(int argc, char **argv);
 
 #endif
