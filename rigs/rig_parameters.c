@@ -73,7 +73,7 @@ int rig_parameters_load(struct rig_loader *loader, const struct yaml_node *node)
 	if (yaml_load(path, loader->arena, loader->faults, &rig->parameters_file, &root, &err) < 0) {
 		if (err.code == ERR_NOMEM)
 			return rig_no_memory(loader);
-		rig_fault(loader, node, "parameters: %s", err.message);
+		rig_fault(loader, node, "parameters: %s %s", name, err.message);
 		return 0;
 	}
 	if (!root || !bind_expect(&loader->binder, root, YAML_MAPPING, "a parameters file"))

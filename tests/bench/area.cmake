@@ -1,6 +1,6 @@
 # SPDX-License-Identifier: Apache-2.0
 # Whole runs on the modelled bench, rehearsed and served.
-foreach(script "defects.py rehearse 1" "ways_out.py 5")
+foreach(script "defects.py rehearse 1" "ways_out.py 5" "drive.py")
   separate_arguments(words UNIX_COMMAND "${script}")
   list(POP_FRONT words file)
   get_filename_component(name ${file} NAME_WE)

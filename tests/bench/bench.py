@@ -119,6 +119,13 @@ def rehearse(suite, folder, *options, rig=RIG, env=None, timeout=180):
     return Run(process.returncode, process.stdout, process.stderr, folder)
 
 
+def report(recorded, new, *options, timeout=180):
+    """A recorded run, judged again into a new folder."""
+    command = [program(), "report", str(recorded), "--out", str(new), *options]
+    process = subprocess.run(command, capture_output=True, text=True, timeout=timeout)
+    return Run(process.returncode, process.stdout, process.stderr, new)
+
+
 def folder():
     return tempfile.TemporaryDirectory(prefix="drivetrial-test-")
 
