@@ -180,13 +180,14 @@ static int bind_map(struct served *served, struct faults *faults)
 /* Defects that lie in the handling of requests; those of a device are the controller's. */
 static void bind_defects(struct served *served)
 {
-	served->swaps_words = model_has_defect(served->model, "word-order-swapped");
 	for (size_t i = 0; i < served->rig->device_count; i++) {
 		struct served_device *device = &served->devices[i];
 		if (!device->device->under_test)
 			continue;
 		device->wrong_exception = model_has_defect(served->model, "wrong-exception");
 		device->writes_neighbour = model_has_defect(served->model, "writes-neighbour");
+		device->swaps_words = model_has_defect(served->model, "word-order-swapped");
+		device->tears = model_has_defect(served->model, "torn");
 	}
 }
 

@@ -12,6 +12,7 @@ struct served_entry {
 	const struct rig_channel *channel;
 	int signal;     /* row of model_signals() */
 	int first, end; /* addresses [first, end) */
+	uint16_t shown; /* high word of the last answer; by the defect torn */
 };
 
 /* The registers or bits of one device and place. */
@@ -30,6 +31,8 @@ struct served_device {
 	struct served_area areas[SERVED_PLACES]; /* of identification: entries only */
 	unsigned heard;                          /* bit per enum model_device that it stands for */
 	bool wrong_exception, writes_neighbour;  /* defects of this device */
+	bool swaps_words, tears;                 /* defects of its values of two registers */
+	unsigned pairs_read;                     /* how many of these were answered */
 };
 
 struct served {
@@ -37,7 +40,6 @@ struct served {
 	struct arena arena;
 	struct model *model;
 	struct served_device *devices; /* as in the rig */
-	bool swaps_words;              /* defect */
 };
 
 /*

@@ -33,9 +33,26 @@ static void put_text(const struct codec *codec, const char *text, uint16_t *word
 	}
 }
 
+enum { TORN_ONE_OF = 8 };
+
+/*
+ * The defect torn: one answer of eight with a value of two registers has the
+ * high word of the answer before, as where a device writes a value while
+ * another part of it is copying it.
+ */
+static void tear(struct served_device *device, struct served_entry *entry,
+                 const struct codec *codec, uint16_t *words)
+{
+	uint16_t *high = &words[codec->low_word_first ? 1 : 0];
+	uint16_t now = *high;
+	if (++device->pairs_read % TORN_ONE_OF == 0)
+		*high = entry->shown;
+	entry->shown = now;
+}
+
 /* Puts the present value of an entry into the image. False: it has none. */
-static bool refresh(struct served *served, struct served_area *area, enum place place,
-                    const struct served_entry *entry)
+static bool refresh(struct served *served, struct served_device *device, struct served_area *area,
+                    enum place place, struct served_entry *entry)
 {
 	uint16_t *words = area->image + (entry->first - area->first);
 	struct codec codec = entry->channel->codec;
@@ -49,7 +66,7 @@ static bool refresh(struct served *served, struct served_area *area, enum place 
 		words[0] = value != 0.0;
 		return !isnan(value);
 	}
-	if (served->swaps_words && codec_registers(&codec) == 2)
+	if (device->swaps_words && codec_registers(&codec) == 2)
 		codec.low_word_first = !codec.low_word_first;
 	if (codec.type == CODEC_BIT)
 		value = value != 0.0;
@@ -60,7 +77,11 @@ static bool refresh(struct served *served, struct served_area *area, enum place 
 		value = least;
 	if (value > most)
 		value = most;
-	return codec_encode(&codec, value, words, NULL) == 0;
+	if (codec_encode(&codec, value, words, NULL) != 0)
+		return false;
+	if (device->tears && codec_registers(&codec) == 2)
+		tear(device, entry, &codec, words);
+	return true;
 }
 
 static bool overlaps(const struct served_entry *entry, int first, int end)
@@ -69,12 +90,13 @@ static bool overlaps(const struct served_entry *entry, int first, int end)
 }
 
 /* Refreshes the image of [first, end), which lies in the used range. */
-static bool refresh_range(struct served *served, struct served_area *area, enum place place,
+static bool refresh_range(struct served *served, struct served_device *device, enum place place,
                           int first, int end)
 {
+	struct served_area *area = &device->areas[place];
 	for (size_t i = 0; i < area->count; i++)
 		if (overlaps(&area->entries[i], first, end) &&
-		    !refresh(served, area, place, &area->entries[i]))
+		    !refresh(served, device, area, place, &area->entries[i]))
 			return false;
 	return true;
 }
@@ -90,27 +112,29 @@ int served_read(struct served *served, struct served_device *device, enum place 
 	for (int at = first; !device->device->gaps_allowed && at < end; at++)
 		if (!area->described[at - area->first])
 			return MODEL_BAD_ADDRESS;
-	if (!refresh_range(served, area, place, first, end))
+	if (!refresh_range(served, device, place, first, end))
 		return MODEL_DEVICE_FAILURE;
 	memcpy(words, area->image + (first - area->first), count * sizeof *words);
 	return 0;
 }
 
 /* The value that a written entry would get, in SI. */
-static double written_value(const struct served *served, const struct served_entry *entry,
+static double written_value(const struct served_device *device, const struct served_entry *entry,
                             enum place place, const uint16_t *words)
 {
 	struct codec codec = entry->channel->codec;
 	if (is_bit_place(place))
 		return words[0] != 0;
-	if (served->swaps_words && codec_registers(&codec) == 2)
+	if (device->swaps_words && codec_registers(&codec) == 2)
 		codec.low_word_first = !codec.low_word_first;
 	return codec_decode(&codec, words) * entry->channel->info.unit->scale;
 }
 
-static int verify_write(const struct served *served, const struct served_area *area,
+static int verify_write(const struct served *served, const struct served_device *device,
                         enum place place, int first, int end, const uint16_t *words)
 {
+	const struct served_area *area = &device->areas[place];
+
 	if (first < area->first || end > area->end)
 		return MODEL_BAD_ADDRESS;
 	for (int at = first; at < end; at++)
@@ -122,7 +146,7 @@ static int verify_write(const struct served *served, const struct served_area *a
 			continue;
 		if (entry->first < first || entry->end > end)
 			return MODEL_BAD_ADDRESS; /* half of a value */
-		double value = written_value(served, entry, place, words + (entry->first - first));
+		double value = written_value(device, entry, place, words + (entry->first - first));
 		int answer = (int)model_write_check(served->model, entry->signal, value);
 		if (answer != MODEL_ACCEPTED)
 			return answer;
@@ -131,14 +155,15 @@ static int verify_write(const struct served *served, const struct served_area *a
 }
 
 /* The defect writes-neighbour: the last word also lands in the register after it. */
-static void write_neighbour(struct served *served, struct served_area *area, enum place place,
-                            int end, uint16_t word)
+static void write_neighbour(struct served *served, const struct served_device *device,
+                            enum place place, int end, uint16_t word)
 {
+	const struct served_area *area = &device->areas[place];
 	for (size_t i = 0; i < area->count; i++) {
 		const struct served_entry *entry = &area->entries[i];
 		if (entry->first == end && entry->end == end + 1)
 			(void)model_write(served->model, entry->signal,
-			                  written_value(served, entry, place, &word));
+			                  written_value(device, entry, place, &word));
 	}
 }
 
@@ -147,17 +172,17 @@ int served_write(struct served *served, struct served_device *device, enum place
 {
 	struct served_area *area = &device->areas[place];
 	const int first = (int)address, end = (int)(address + count);
-	int answer = verify_write(served, area, place, first, end, words);
+	int answer = verify_write(served, device, place, first, end, words);
 
 	for (size_t i = 0; answer == 0 && i < area->count; i++) {
 		const struct served_entry *entry = &area->entries[i];
 		if (overlaps(entry, first, end))
 			answer = (int)model_write(
 			    served->model, entry->signal,
-			    written_value(served, entry, place, words + (entry->first - first)));
+			    written_value(device, entry, place, words + (entry->first - first)));
 	}
 	if (answer == 0 && device->writes_neighbour)
-		write_neighbour(served, area, place, end, words[count - 1]);
+		write_neighbour(served, device, place, end, words[count - 1]);
 	return answer;
 }
 

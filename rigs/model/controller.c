@@ -60,8 +60,20 @@ void controller_start(struct controller *controller, const struct controller_tun
 	faults_start(c);
 }
 
+/* Counts over many turns. A correction at the index is no more than half a turn. */
+static void follow_position(struct controller *c, const struct encoder *encoder)
+{
+	int turn = encoder->counts_per_turn, moved = encoder->counter - c->counts;
+	if (moved > turn / 2)
+		moved -= turn;
+	else if (moved < -turn / 2)
+		moved += turn;
+	c->position_counts += moved;
+}
+
 static void believed_angle(struct controller *c, const struct encoder *encoder, int hall_sector)
 {
+	follow_position(c, encoder);
 	c->counts = encoder->counter;
 	/* The middle of the count. */
 	double mech = (c->counts + 0.5) * TWO_PI / c->counts_per_turn;

@@ -19,6 +19,8 @@
 #include "model_inner.h"
 #include "model_modulation.h"
 
+#define TWO_PI 6.28318530717958647692
+
 static int fill_from_nameplate(struct model_config *c, struct err *reterr)
 {
 	if (c->pole_pairs < 1 || c->pole_pairs > 100)
@@ -185,6 +187,7 @@ static void renew_image(struct model *model)
 	    .voltage_beta_v = c->voltage_beta_v,
 	    .voltage_d_v = c->voltage_d_v,
 	    .voltage_q_v = c->voltage_q_v,
+	    .position_rad = (double)c->position_counts * TWO_PI / c->counts_per_turn,
 	    .fault_code = c->fault_code,
 	    .state = (int)c->state,
 	    .torque_off_inputs = model->fault_box.relays[RELAY_STO_A].closed |

@@ -113,6 +113,7 @@ struct controller {
 	/* measured, in the frame that it believes */
 	struct speed_meter meter;
 	int counts;
+	int64_t position_counts; /* since the last enable, begun with counts */
 	double speed_rad_s, angle_elec_rad, current_d_a, current_q_a, dc_v, winding_c, torque_nm;
 
 	/* states and faults */

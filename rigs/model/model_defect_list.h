@@ -31,12 +31,12 @@ DEFECT(FIELD_WEAKENING_LATE, "field-weakening-late", "torque_angle",
        "the field is weakened only beyond the voltage limit, when there is nothing left to control")
 DEFECT(INDEX_DRIFTING, "index-drifting", "alignment",
        "the angle is not set at the index but shifted by one count each turn")
-DEFECT(SINE_ERROR, "sine-error", "alignment",
+DEFECT(SINE_ERROR, "sine-error", "stays_within",
        "the believed angle has an error of 10 deg electrical amplitude once per turn")
 /* modulation */
-DEFECT(PHASE_DUTY_WRONG, "phase-duty-wrong", "modulation",
+DEFECT(PHASE_DUTY_WRONG, "phase-duty-wrong", "stays_within",
        "the duty of phase b is 8 % too small")
-DEFECT(NULL_STATES_UNEQUAL, "null-states-unequal", "modulation",
+DEFECT(NULL_STATES_UNEQUAL, "null-states-unequal", "stays_within",
        "only the lower null state is used: the null time is not shared")
 /* faults */
 DEFECT(FAULT_NOT_LATCHED, "fault-not-latched", "fault_reaction",
@@ -49,7 +49,7 @@ DEFECT(RESET_WHILE_CAUSE, "reset-while-cause", "fault_reaction",
        "a reset clears the fault although its cause lasts, and the drive runs with it")
 DEFECT(RESTARTS_BY_ITSELF, "restarts-by-itself", "fault_reaction",
        "50 ms after the cause has gone the drive runs again: no reset, no new enable")
-DEFECT(RESTARTS_ON_RESET, "restarts-on-reset", "fault_reaction",
+DEFECT(RESTARTS_ON_RESET, "restarts-on-reset", "stays_within",
        "after a reset the drive runs at once where enable still stands")
 DEFECT(TORQUE_OFF_SLOW, "torque-off-slow", "fault_reaction",
        "the fault is shown at once, but the torque is ramped out over 600 ms")
@@ -82,12 +82,14 @@ DEFECT(CLIPS_SILENTLY, "clips-silently", "refusal",
        "a speed command beyond the range is accepted and clipped without an exception")
 DEFECT(WRONG_EXCEPTION, "wrong-exception", "refusal",
        "refused requests are answered with the wrong exception code")
-DEFECT(WRITES_NEIGHBOUR, "writes-neighbour", "refusal",
+DEFECT(WRITES_NEIGHBOUR, "writes-neighbour", "stays_within",
        "a write also reaches the register after it")
 DEFECT(FROZEN_IMAGE, "frozen-image", "life",
        "half a second after the first enable the register image stands still, life counter included")
 DEFECT(STALE_IMAGE, "stale-image", "fault_reaction",
        "the values in the register image are 90 ms old, while the life counter runs on")
-DEFECT(WORD_ORDER_SWAPPED, "word-order-swapped", "agreement",
+DEFECT(WORD_ORDER_SWAPPED, "word-order-swapped", "stays_within",
        "the controller answers values of two registers with their words exchanged")
+DEFECT(TORN, "torn", "stays_within",
+       "one of eight answers of the controller joins two registers of different instants")
 /* clang-format on */

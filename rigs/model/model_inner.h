@@ -61,7 +61,7 @@ struct analyser {
 struct image {
 	double speed_rad_s, dc_voltage_v, current_d_a, current_q_a, torque_nm, temperature_c;
 	double current_d_command_a, current_q_command_a, duty[3];
-	double voltage_alpha_v, voltage_beta_v, voltage_d_v, voltage_q_v;
+	double voltage_alpha_v, voltage_beta_v, voltage_d_v, voltage_q_v, position_rad;
 	int fault_code, state, torque_off_inputs;
 	bool running, ready;
 	int rotor_counts;

@@ -36,6 +36,9 @@ SHOWN("controller.torque_off_inputs", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_INT,
       image.torque_off_inputs, "bit 0: channel A of safe torque off is open, bit 1: channel B")
 SHOWN("controller.rotor_counts", MODEL_CONTROLLER, DIM_NUMBER, HOLDS_INT, image.rotor_counts,
       "encoder counts since index, modulo 4 times the lines")
+SHOWN("controller.rotor_position", MODEL_CONTROLLER, DIM_ANGLE_MECH, HOLDS_DOUBLE,
+      image.position_rad,
+      "turned since it was enabled last, by its encoder; begins with the angle since the index")
 SHOWN("controller.current_d_command", MODEL_CONTROLLER, DIM_CURRENT_AMPLITUDE, HOLDS_DOUBLE,
       image.current_d_command_a, "what its current loop is told")
 SHOWN("controller.current_q_command", MODEL_CONTROLLER, DIM_CURRENT_AMPLITUDE, HOLDS_DOUBLE,

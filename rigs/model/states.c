@@ -56,6 +56,7 @@ static void enter_running(struct controller *c, const struct sensed *sensed)
 {
 	encoder_reference(sensed->encoder);
 	c->counts = sensed->encoder->counter;
+	c->position_counts = c->counts;
 	c->current_loops.integral_d = c->current_loops.integral_q = 0;
 	c->speed_loop.integral_nm = 0;
 	c->torque_q_a = c->weakening_d_a = c->wanted_v = 0;

@@ -310,14 +310,53 @@ static void defects_of_the_request_handling_are_there(void **state)
 	assert_near(present(&fixture, "controller.watchdog_time"), 0.003, 1e-12, "s");
 	finish(&fixture);
 
+	/* Another device's values of two registers are right. */
 	const struct question speed = {BENCH_WIRE, TRANSDUCER, 5, {4, 0, 0, 0, 2}, 0};
 	start(&fixture, NULL);
 	assert_int_equal(ask(&fixture, &speed, right), 6);
 	finish(&fixture);
 	start(&fixture, "word-order-swapped");
 	assert_int_equal(ask(&fixture, &speed, reply), 6);
+	assert_memory_equal(reply, right, 6);
+	finish(&fixture);
+
+	const struct question position = {DRIVE_WIRE, CONTROLLER, 5, {4, 0, 13, 0, 2}, 0};
+	start(&fixture, NULL);
+	assert_int_equal(ask(&fixture, &position, right), 6);
+	finish(&fixture);
+	start(&fixture, "word-order-swapped");
+	assert_int_equal(ask(&fixture, &position, reply), 6);
 	assert_memory_equal(reply + 2, right + 4, 2);
 	assert_memory_equal(reply + 4, right + 2, 2);
+	finish(&fixture);
+}
+
+/* One answer of eight has the high word of the answer before it. */
+static void a_torn_value_joins_two_instants(void **state)
+{
+	(void)state;
+	struct fixture fixture;
+	uint8_t reply[LINK_PDU_MOST];
+	const struct question enable = {DRIVE_WIRE, CONTROLLER, 5, {6, 0, 1, 0, 1}, 0};
+	const struct question fast = {DRIVE_WIRE, CONTROLLER, 5, {6, 0, 0, 0x1D, 0x4C}, 0};
+	const struct question position = {DRIVE_WIRE, CONTROLLER, 5, {4, 0, 13, 0, 2}, 0};
+	unsigned before = 0, torn = 0;
+
+	start(&fixture, "torn");
+	struct model *model = served_model(fixture.served);
+	model_advance(model, 10 * NS_PER_MS);
+	expect(&fixture, &enable, 1);
+	expect(&fixture, &fast, 1); /* 1500 rpm: 65.536 deg pass in 7.3 ms */
+	model_advance(model, 500 * NS_PER_MS);
+	for (int i = 1; i <= 32; i++) {
+		model_advance(model, model_now(model) + 8 * NS_PER_MS);
+		assert_int_equal(ask(&fixture, &position, reply), 6);
+		unsigned high = (unsigned)reply[2] << 8 | reply[3];
+		if (i > 1 && high == before)
+			torn++;
+		before = high;
+	}
+	assert_int_equal(torn, 4);
 	finish(&fixture);
 }
 
@@ -413,6 +452,7 @@ int main(void)
 	    cmocka_unit_test(devices_identify_themselves),
 	    cmocka_unit_test(only_good_requests_feed_the_watchdog),
 	    cmocka_unit_test(defects_of_the_request_handling_are_there),
+	    cmocka_unit_test(a_torn_value_joins_two_instants),
 	    cmocka_unit_test(what_is_not_served_is_named),
 	    cmocka_unit_test(random_requests_never_break_the_bounds),
 	};
