@@ -5,6 +5,8 @@
  * CHECK(name) defined. To add a check: one file, one row, one test.
  */
 CHECK(step_response)
+CHECK(load_step)
+CHECK(tracking)
 CHECK(torque_angle)
 CHECK(alignment)
 CHECK(fault_reaction)
@@ -12,3 +14,6 @@ CHECK(silence_reaction)
 CHECK(refusal)
 CHECK(stays_within)
 CHECK(same_sign)
+CHECK(agreement)
+CHECK(encoder)
+CHECK(modulation)

@@ -42,28 +42,6 @@ static const struct metric_kind metrics[] = {
 
 enum { ROWS_LEAST = 3 };
 
-/* The value commanded when the window begins; false: none was. */
-static bool commanded(const struct check_input *in, int channel, int64_t from_ns, double *ret_value)
-{
-	bool found = false;
-	for (size_t i = 0; i < in->command_count; i++)
-		if (in->commands[i].channel == channel && in->commands[i].latest_ns <= from_ns) {
-			*ret_value = in->commands[i].value;
-			found = true;
-		}
-	return found;
-}
-
-/* Another command inside the window would leave open which sign is meant. */
-static bool changes(const struct check_input *in, int channel, struct span span)
-{
-	for (size_t i = 0; i < in->command_count; i++)
-		if (in->commands[i].channel == channel && in->commands[i].latest_ns > span.from_ns &&
-		    in->commands[i].earliest_ns < span.to_ns)
-			return true;
-	return false;
-}
-
 struct agreement {
 	bool against, unknown;
 	char why[224];
@@ -127,13 +105,13 @@ static int evaluate(const struct check_input *in, const void *params, struct met
 	double value = 0;
 	if (!window_span(in, &own->window, &span, agreement.why, sizeof agreement.why)) {
 		/* why is said */
-	} else if (!commanded(in, own->command, span.from_ns, &value) || value == 0) {
+	} else if (!command_constant(in, own->command, span, &value, agreement.why,
+	                             sizeof agreement.why)) {
+		/* why is said */
+	} else if (value == 0) {
 		(void)snprintf(agreement.why, sizeof agreement.why,
-		               "%s was not commanded, or to 0, before the window: no sign to compare with",
+		               "%s was commanded to 0: no sign to compare with",
 		               in->channels[own->command].name);
-	} else if (changes(in, own->command, span)) {
-		(void)snprintf(agreement.why, sizeof agreement.why,
-		               "%s was commanded anew within the window", in->channels[own->command].name);
 	} else {
 		agreement.unknown = own->channels.count == 0;
 		for (size_t i = 0; i < own->channels.count; i++)

@@ -279,3 +279,25 @@ double rows_error_limit(const struct rows *rows, size_t begin, size_t end)
 	}
 	return limit;
 }
+
+bool command_constant(const struct check_input *in, int channel, struct span span,
+                      double *ret_value, char *why, size_t size)
+{
+	const char *name = in->channels[channel].name;
+	bool found = false;
+	for (size_t i = 0; i < in->command_count; i++) {
+		const struct command *command = &in->commands[i];
+		if (command->channel != channel)
+			continue;
+		if (command->latest_ns <= span.from_ns) {
+			*ret_value = command->value;
+			found = true;
+		} else if (command->earliest_ns < span.to_ns) {
+			(void)snprintf(why, size, "%s was commanded anew within the window", name);
+			return false;
+		}
+	}
+	if (!found)
+		(void)snprintf(why, size, "%s was not commanded before the window", name);
+	return found;
+}

@@ -56,6 +56,13 @@ struct stretch rows_stretch(const struct rows *rows, size_t begin, size_t end, i
 /* Largest limit of error in [begin, end). */
 double rows_error_limit(const struct rows *rows, size_t begin, size_t end);
 
+/*
+ * The value commanded when a span begins; false with why[size] where none was,
+ * or another came within the span.
+ */
+bool command_constant(const struct check_input *in, int channel, struct span span,
+                      double *ret_value, char *why, size_t size);
+
 /* The mark of an index, or NULL with why[size] where it was not reached. */
 const struct mark *mark_reached(const struct check_input *in, int mark, char *why, size_t size);
 

@@ -9,10 +9,10 @@
 #include <stdlib.h>
 #include <string.h>
 
-#include "check.h"
+#include "decision.h"
 #include "near.h"
 
-enum { RECORDING_CHANNELS = 8, RECORDING_MARKS = 8 };
+enum { RECORDING_CHANNELS = 8, RECORDING_MARKS = 8, RECORDING_COMMANDS = 2000 };
 
 struct recorded_row {
 	int64_t sent, received;
@@ -26,7 +26,7 @@ struct recording {
 	size_t room[RECORDING_CHANNELS], channel_count;
 	struct mark marks[RECORDING_MARKS];
 	size_t mark_count;
-	struct command commands[RECORDING_MARKS];
+	struct command commands[RECORDING_COMMANDS];
 	size_t command_count;
 	struct outcome outcomes[RECORDING_MARKS];
 	size_t outcome_count;
@@ -121,6 +121,7 @@ static inline int recording_mark(struct recording *rec, const char *name, int64_
 static inline void recording_command(struct recording *rec, int channel, double value,
                                      int64_t earliest, int64_t latest)
 {
+	assert_true(rec->command_count < RECORDING_COMMANDS);
 	rec->commands[rec->command_count++] = (struct command){channel, value, earliest, latest};
 }
 
@@ -275,6 +276,33 @@ static inline const struct metric *check_metric(const struct used_check *use, co
 			return &use->metrics[i];
 	fail_msg("no metric %s", name);
 	return NULL;
+}
+
+/* The guarded verdict against [min, max]. */
+static inline enum verdict decided(const struct metric *metric, double min, double max)
+{
+	char reason[512];
+	const struct limit limit = {.min = min, .max = max};
+	return decide(metric, &limit, reason, sizeof reason);
+}
+
+/* Limits just beyond the interval pass, beside it fail, across it are open. */
+static inline void assert_edges(const struct metric *metric)
+{
+	double width = metric->high - metric->low, small = 1e-9 + 1e-6 * width;
+	double none = -(double)INFINITY;
+	assert_int_equal(decided(metric, none, metric->high + small), VERDICT_PASS);
+	assert_int_equal(decided(metric, none, metric->low - small), VERDICT_FAIL);
+	if (width > 0)
+		assert_int_equal(decided(metric, none, metric->high - width / 2), VERDICT_INCONCLUSIVE);
+}
+
+/* NaN in all values of a channel between two times (ms, sent). */
+static inline void recording_hole(struct recording *rec, int channel, double from, double to)
+{
+	for (size_t i = 0; i < rec->series[channel].rows; i++)
+		if (rec->rows[channel][i].sent >= MS(from) && rec->rows[channel][i].sent <= MS(to))
+			rec->rows[channel][i].value = (double)NAN;
 }
 
 static inline void assert_unknown(const struct metric *metric, const char *word)

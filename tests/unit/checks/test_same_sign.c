@@ -84,10 +84,10 @@ static void without_a_command_or_rows_nothing_is_proven(void **state)
 	struct bench bench;
 	bench_init(&bench);
 	play(&bench, 0, 99, 101, 2);
-	assert_unknown(run(&bench), "no sign");
+	assert_unknown(run(&bench), "commanded");
 	play(&bench, 100, 99, 101, 2);
 	bench.rec.command_count = 0;
-	assert_unknown(run(&bench), "no sign");
+	assert_unknown(run(&bench), "commanded");
 	play(&bench, 100, 99, 101, 2);
 	bench.rec.commands[2].earliest_ns = bench.rec.commands[2].latest_ns = MS(250);
 	assert_unknown(run(&bench), "anew");

@@ -214,7 +214,7 @@ static void every_kind_of_check_is_in_the_table_and_complete(void **state)
 	(void)state;
 	size_t count;
 	const struct check_kind *const *table = check_table(&count);
-	assert_int_equal(count, 8);
+	assert_true(count >= 13);
 	for (size_t i = 0; i < count; i++) {
 		assert_ptr_equal(check_find(table[i]->name, strlen(table[i]->name)), table[i]);
 		assert_true(strlen(table[i]->text) > 10);
