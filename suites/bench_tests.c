@@ -41,7 +41,8 @@ static int sample_of(struct bench *b, struct test *test, const int *channels, si
 	if (!test->groups || !copy)
 		return out_of_memory(b);
 	memcpy(copy, channels, count * sizeof *copy);
-	test->groups[0] = (struct sample_group){EVERY_NS, copy, count};
+	test->groups[0] =
+	    (struct sample_group){.every_ns = EVERY_NS, .channels = copy, .channel_count = count};
 	test->group_count = 1;
 	return 0;
 }

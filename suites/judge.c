@@ -85,9 +85,12 @@ static int judge_limits(struct judging *j, const struct check_use *use, size_t m
 static int64_t shortest_interval(const struct test *test)
 {
 	int64_t shortest = test->group_count > 0 ? INT64_MAX : 0;
-	for (size_t i = 0; i < test->group_count; i++)
-		if (test->groups[i].every_ns < shortest)
-			shortest = test->groups[i].every_ns;
+	for (size_t i = 0; i < test->group_count; i++) {
+		const struct sample_group *group = &test->groups[i];
+		int64_t recorded = group->every_ns * (group->decimate > 1 ? group->decimate : 1);
+		if (recorded < shortest)
+			shortest = recorded;
+	}
 	return shortest;
 }
 

@@ -14,6 +14,7 @@ struct sample_group {
 	int64_t every_ns; /* 0: as fast as the link allows */
 	int *channels;
 	size_t channel_count;
+	int64_t decimate; /* of so many rows one is recorded; 0 is as 1 */
 };
 
 struct check_use {

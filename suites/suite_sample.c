@@ -23,6 +23,13 @@ static const struct field SAMPLE_FIELDS[] = {
      .kind = FIELD_OWN,
      .flags = FIELD_REQUIRED,
      .text = "channels that are read, derived ones too"},
+    {.key = "decimate",
+     .kind = FIELD_INTEGER,
+     .least = 1,
+     .most = 1000000,
+     .fallback = "1",
+     .offset = offsetof(struct sample_group, decimate),
+     .text = "of so many rows one is recorded; interlocks and awaits still see each"},
 };
 
 static const struct field_table SAMPLE_TABLE = {"sample group",
