@@ -98,8 +98,10 @@ static void take_link(const struct bench_timing *timing, const struct poll_plan 
 			link->reach_ns = reach;
 			link->reach_most_ns = reach_most;
 		}
+		int64_t recorded = group->decimate > 1 ? group->decimate : 1;
 		for (size_t b = 0; b < group->count; b++)
-			take_block(timing, &group->blocks[b], reach, reach_most, channels);
+			take_block(timing, &group->blocks[b], reach * recorded, reach_most * recorded,
+			           channels);
 	}
 }
 

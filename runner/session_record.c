@@ -10,6 +10,7 @@
 #include <string.h>
 #include <unistd.h>
 
+#include "disk_need.h"
 #include "judging.h"
 #include "report.h"
 #include "session.h"
@@ -98,6 +99,8 @@ int session_record(struct session *session)
 	struct err err = {0};
 	char compact[32];
 	fill_facts(session, compact, sizeof compact);
+	if (disk_need_check(session, &err) < 0)
+		return session_exit_of(&err);
 	if (run_folder_new(session->options->out, compact, session->rig->name, &session->folder, &err) <
 	    0)
 		return session_exit_of(&err);

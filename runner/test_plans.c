@@ -76,8 +76,8 @@ static int fill_group(struct draft *draft, int link, int group, int64_t period_n
 	return 0;
 }
 
-static int fill_plan(struct draft *draft, const int64_t *periods, size_t groups,
-                     struct test_plan *plan)
+static int fill_plan(struct draft *draft, const int64_t *periods, const int64_t *decimates,
+                     size_t groups, struct test_plan *plan)
 {
 	const struct rig *rig = draft->rig;
 	struct poll_plan *plans = arena_array(draft->arena, rig->link_count, sizeof *plans);
@@ -86,9 +86,11 @@ static int fill_plan(struct draft *draft, const int64_t *periods, size_t groups,
 	for (size_t link = 0; link < rig->link_count; link++) {
 		plans[link].generation = plan->generation;
 		plans[link].group_count = groups;
-		for (size_t g = 0; g < groups; g++)
+		for (size_t g = 0; g < groups; g++) {
 			if (fill_group(draft, (int)link, (int)g, periods[g], &plans[link].groups[g]) < 0)
 				return -1;
+			plans[link].groups[g].decimate = decimates[g];
+		}
 	}
 	plan->blocks = draft->blocks;
 	plan->block_count = draft->count;
@@ -101,7 +103,7 @@ static int plan_test(struct draft *draft, const struct test *test, unsigned char
                      struct test_plan *plan)
 {
 	const struct rig *rig = draft->rig;
-	int64_t periods[GROUPS_MOST] = {IDLE_PERIOD_NS};
+	int64_t periods[GROUPS_MOST] = {IDLE_PERIOD_NS}, decimates[GROUPS_MOST] = {0};
 	size_t groups = test && test->group_count > 0 ? test->group_count : 1, fastest = 0;
 	unsigned char *sets[GROUPS_MOST];
 	if (groups > GROUPS_MOST)
@@ -114,7 +116,10 @@ static int plan_test(struct draft *draft, const struct test *test, unsigned char
 		if (!test || test->group_count == 0)
 			continue;
 		periods[g] = test->groups[g].every_ns;
-		if (periods[g] < periods[fastest])
+		decimates[g] = test->groups[g].decimate;
+		/* Of equally fast ones that which is recorded most: life counters are judged from there. */
+		if (periods[g] < periods[fastest] ||
+		    (periods[g] == periods[fastest] && decimates[g] < decimates[fastest]))
 			fastest = g;
 		for (size_t i = 0; i < test->groups[g].channel_count; i++)
 			rig_channel_needs(rig, test->groups[g].channels[i], sets[g]);
@@ -129,7 +134,7 @@ static int plan_test(struct draft *draft, const struct test *test, unsigned char
 	for (size_t g = 0; g < groups; g++)
 		if (add_group(draft, sets[g], (int)g) < 0)
 			return -1;
-	return fill_plan(draft, periods, groups, plan);
+	return fill_plan(draft, periods, decimates, groups, plan);
 }
 
 int test_plan_make(const struct rig *rig, const struct test *test, unsigned char *needed,

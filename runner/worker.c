@@ -44,7 +44,8 @@ struct device_state {
 struct flight {
 	const struct poll_block *polled; /* NULL: a job */
 	int device;
-	bool attempt; /* of a job: must be refused */
+	bool attempt;  /* of a job: must be refused */
+	bool recorded; /* of a poll: not one that `decimate` leaves out */
 	int64_t since_ns;
 };
 
@@ -52,6 +53,7 @@ struct flight {
 struct round {
 	int64_t slot_ns;
 	size_t next;
+	int64_t number; /* of the round, for `decimate` */
 };
 
 struct worker {
@@ -278,9 +280,9 @@ static void interlock_violated(struct worker *worker, const struct watch *watch,
 		(void)ring_push(&worker->events, &event, sizeof event);
 }
 
-static void row_out(struct worker *worker, const struct poll_block *polled, bool good)
+static void row_out(struct worker *worker, const struct flight *flight, bool good)
 {
-	const struct read_block *block = polled->read;
+	const struct read_block *block = flight->polled->read;
 	struct row *row = worker->row;
 	struct watch violated_copy;
 	row->generation = worker->plan->generation;
@@ -304,7 +306,7 @@ static void row_out(struct worker *worker, const struct poll_block *polled, bool
 	unlock(worker);
 	if (violated && !rest)
 		interlock_violated(worker, &violated_copy, row->received_ns);
-	if (row->generation >= 0 &&
+	if (row->generation >= 0 && flight->recorded &&
 	    !ring_push(&worker->rows, row, sizeof *row + row->count * sizeof(double)))
 		(void)stop_raise(worker->config.stop,
 		                 "samples come faster than they can be written to the disk");
@@ -382,7 +384,7 @@ static void finish(struct worker *worker, const struct flight *flight, int64_t n
 		worker->open = worker->broken = false;
 	}
 	if (flight->polled)
-		row_out(worker, flight->polled, reply->status == LINK_OK);
+		row_out(worker, flight, reply->status == LINK_OK);
 	/* Waking it for each row was tried: half of the processor time of a fast run went there. */
 	if (!flight->polled || !answered || worker->watch_fired || stop_raised(worker->config.stop))
 		worker->config.wake(worker->config.wake_context);
@@ -397,6 +399,7 @@ static void end_round(struct worker *worker, size_t group, int64_t now_ns)
 	struct round *round = &worker->rounds[group];
 	int64_t period = worker->plan->groups[group].period_ns;
 	round->next = 0;
+	round->number++;
 	if (period == 0) {
 		round->slot_ns = now_ns;
 		return;
@@ -458,7 +461,8 @@ static bool may_fly(const struct worker *worker, int device)
 }
 
 /* The next block to read, taken from its round; NULL and *due where none is due. */
-static const struct poll_block *next_poll(struct worker *worker, int64_t now_ns, int64_t *due)
+static const struct poll_block *next_poll(struct worker *worker, int64_t now_ns, int64_t *due,
+                                          bool *ret_recorded)
 {
 	bool passed[GROUPS_MOST] = {false};
 	*due = INT64_MAX;
@@ -491,6 +495,7 @@ static const struct poll_block *next_poll(struct worker *worker, int64_t now_ns,
 		if (!may_fly(worker, block->read->device))
 			return NULL;
 		round->next++;
+		*ret_recorded = group->decimate < 2 || round->number % group->decimate == 0;
 		return block;
 	}
 	*due = now_ns + NS_PER_MS; /* every block is of a silent device */
@@ -661,10 +666,12 @@ static bool is_wanted(struct worker *worker)
 
 static bool take_poll(struct worker *worker, int64_t now_ns, struct flight *flight, int64_t *due)
 {
-	const struct poll_block *polled = next_poll(worker, now_ns, due);
+	bool recorded = true;
+	const struct poll_block *polled = next_poll(worker, now_ns, due, &recorded);
 	if (!polled)
 		return false;
-	*flight = (struct flight){.polled = polled, .device = polled->read->device, .since_ns = now_ns};
+	*flight = (struct flight){
+	    .polled = polled, .device = polled->read->device, .recorded = recorded, .since_ns = now_ns};
 	worker->request = polled->request;
 	return true;
 }

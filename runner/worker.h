@@ -31,6 +31,7 @@ struct poll_block {
 
 struct poll_group {
 	int64_t period_ns; /* 0: without pause */
+	int64_t decimate;  /* of so many rounds one is recorded; 0 is as 1 */
 	const struct poll_block *blocks;
 	size_t count;
 };

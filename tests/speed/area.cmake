@@ -8,3 +8,11 @@ target_link_libraries(bare_loop PRIVATE flags PkgConfig::MODBUS)
 add_test(NAME speed/short COMMAND /usr/bin/python3 ${CMAKE_CURRENT_LIST_DIR}/speed --short)
 set_tests_properties(speed/short PROPERTIES TIMEOUT 300 RUN_SERIAL ON
   ENVIRONMENT "DRIVETRIAL=$<TARGET_FILE:drivetrial>;PYTHONDONTWRITEBYTECODE=1")
+foreach(words "long_run --hours 0.01" "disk.py")
+  separate_arguments(words UNIX_COMMAND "${words}")
+  list(POP_FRONT words file)
+  get_filename_component(name ${file} NAME_WE)
+  add_test(NAME speed/${name} COMMAND /usr/bin/python3 ${CMAKE_CURRENT_LIST_DIR}/${file} ${words})
+  set_tests_properties(speed/${name} PROPERTIES TIMEOUT 300 SKIP_RETURN_CODE 77
+    ENVIRONMENT "DRIVETRIAL=$<TARGET_FILE:drivetrial>;PYTHONDONTWRITEBYTECODE=1")
+endforeach()

@@ -482,6 +482,26 @@ static void rows_alone_do_not_wake_the_conductor(void **state)
 	assert_int_equal(bench->wakes, 2);
 }
 
+static void a_decimated_group_is_polled_at_each_slot_and_recorded_at_some(void **state)
+{
+	struct bench *bench = *state;
+	int64_t sent[200], received[200];
+	add_group(bench, MS, "bench_speed", 1);
+	bench->plan.groups[0].decimate = 10;
+	struct condition condition = {.kind = CONDITION_ABOVE, .a = 1, .channel = bench->channels[0]};
+	int index = worker_watch_add(bench->worker, WATCH_AWAIT, &condition, 0);
+	start(bench);
+	run_until(bench, 100 * MS);
+	struct watch watch;
+	worker_watch_get(bench->worker, index, &watch);
+	assert_int_equal(watch.rows, 99); /* the first may show what was true before */
+	assert_int_equal(bench->script.begun_count, 100);
+	int rows = take_rows(bench, 0, sent, received, 200);
+	assert_int_equal(rows, 10);
+	for (int i = 0; i < rows; i++)
+		assert_int_equal(sent[i], 10 * MS * i);
+}
+
 /* ---- several under way ----------------------------------------------------------- */
 
 static void without_the_entry_one_request_is_under_way(void **state)
@@ -645,6 +665,7 @@ int main(void)
 	    TEST(only_silent_devices_make_no_loop),
 	    TEST(a_device_gets_its_minimum_pause),
 	    TEST(rows_alone_do_not_wake_the_conductor),
+	    TEST(a_decimated_group_is_polled_at_each_slot_and_recorded_at_some),
 	    TEST(without_the_entry_one_request_is_under_way),
 	    TEST(as_many_are_under_way_as_the_device_takes),
 	    TEST(a_link_of_one_stays_at_one),
