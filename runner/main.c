@@ -19,6 +19,7 @@ static const struct verb {
     {"survey", "--rig RIG", "look at a bench, command nothing: identity, values, times", verb_survey},
     {"schema", "rig|suite|results", "JSON Schema of the files, for editors and programs", verb_schema},
     {"serve", "--rig RIG", "the modelled bench as Modbus servers, in real time", verb_serve},
+    {"help", "NAME|reference", "what a check, step, key or unit is", verb_help},
     {"report", "DIR --out NEW", "rebuild every report from a recorded run, or --verify it",
      verb_report},
     {"compare", "OLD NEW [NEWER...]", "put the results of runs side by side: what changed, what got worse",
@@ -36,6 +37,7 @@ static void usage(FILE *out)
 		(void)fprintf(out, "  drivetrial %-8s %-18s  %s\n", VERBS[i].name, VERBS[i].form,
 		              VERBS[i].text);
 	(void)fputs("\n`drivetrial VERB --help` shows the options of a verb.\n"
+	            "`drivetrial help` NAME explains what may stand in a file.\n"
 	            "\n"
 	            "Exit codes of run and rehearse, the highest-ranking one that applies, ranked 4, "
 	            "3, 1, 2, 0:\n"
@@ -57,7 +59,7 @@ int main(int argc, char **argv)
 		return EXIT_USAGE;
 	}
 	if (strcmp(argv[1], "--help") == 0 || strcmp(argv[1], "-h") == 0 ||
-	    strcmp(argv[1], "help") == 0) {
+	    (strcmp(argv[1], "help") == 0 && argc == 2)) {
 		usage(stdout);
 		return 0;
 	}

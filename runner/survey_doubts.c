@@ -122,7 +122,8 @@ static size_t doubt_order(const struct rig *rig, int index, const struct survey_
 		return 1;
 	}
 	double bytes = other_order(channel, state, false, true);
-	if (wrong && sane(span, bytes)) {
+	/* Of one register alone nearly any value would fit when turned round. */
+	if (wrong && registers > 1 && sane(span, bytes)) {
 		text_printf(out, "  ? %s is %s as the rig file reads it; with `bytes: %s` it would be %s\n",
 		            name, is, order_name(!channel->codec.low_byte_first),
 		            channel_value_text(rig, index, bytes, other, sizeof other));

@@ -10,6 +10,7 @@ int verb_rehearse(int argc, char **argv);
 int verb_plan(int argc, char **argv);
 int verb_survey(int argc, char **argv);
 int verb_schema(int argc, char **argv);
+int verb_help(int argc, char **argv);
 int verb_serve(int argc, char **argv);
 int verb_report(int argc, char **argv);
 int verb_compare(int argc, char **argv);
