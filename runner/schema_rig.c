@@ -2,6 +2,7 @@
 /* The schema of rig files: the tables of rigs/rig_*.c, and what their own code binds. */
 #include <string.h>
 
+#include "model.h"
 #include "rig_loader.h"
 #include "schema_steps.h"
 
@@ -87,8 +88,8 @@ static json_t *derived(void)
 
 static json_t *channels(void)
 {
-	static const char *const PLACES[] = {"coil",             "discrete_input", "input_register",
-	                                     "holding_register", "identification", NULL};
+	static const char *const PLACES[] = {
+	    "coil", "discrete_input", "input_register", "holding_register", "identification", NULL};
 	json_t *plain = schema_of_table(&MAKER, &RIG_CHANNEL_FIELDS, NULL);
 	if (plain)
 		schema_exactly_one(plain, PLACES);
@@ -129,6 +130,8 @@ static json_t *top_own(const char *key)
 	}
 	if (strcmp(key, "attempts") == 0)
 		return schema_list(schema_of_table(&MAKER, &RIG_ATTEMPT_FIELDS, NULL), 0, 0);
+	if (strcmp(key, "parameters") == 0) /* a file beside the rig file */
+		return json_pack("{s:s,s:s}", "type", "string", "pattern", "^[^/]*parameters[.]yaml$");
 	if (strcmp(key, "model") == 0)
 		return schema_of_table(&MAKER, &RIG_MODEL_FIELDS, NULL);
 	return NULL;
@@ -157,7 +160,7 @@ static json_t *rules_own(const char *key)
 	if (strcmp(key, "serves") == 0)
 		return schema_map(json_pack("{s:s}", "type", "string"));
 	if (strcmp(key, "parameters") == 0)
-		return schema_map(json_object());
+		return schema_of_table(&MAKER, model_parameters(), NULL);
 	return strcmp(key, "at") == 0 ? schema_scalar() : NULL;
 }
 
@@ -173,7 +176,7 @@ static json_t *own(const struct field_table *table, const struct field *field)
 		return tolerated(field);
 	if (table == &RIG_LINK_FIELDS)
 		return json_pack("{s:s}", "type", "string");
-	if (table == &RIG_ACCURACY_FIELDS)
+	if (table == &RIG_ACCURACY_FIELDS || table == model_parameters())
 		return schema_scalar();
 	if (table == condition_fields())
 		return schema_condition_own(field);

@@ -15,6 +15,7 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "survey_show.h"
 #include "text.h"
 
 enum { LOST_MOST = 3 };
@@ -57,8 +58,15 @@ static bool ask(struct survey *survey, int device, const struct link_request *re
 			now = clock_now(&survey->clock);
 	}
 	bool answered = reply->status == LINK_OK || reply->status == LINK_EXCEPTION;
+	/* From a gateway: the device behind it is not there. */
+	bool gateway =
+	    reply->status == LINK_EXCEPTION && (reply->exception == 10 || reply->exception == 11);
+	if (gateway)
+		(void)snprintf(state->cause, sizeof state->cause, "exception %d (%s): %s", reply->exception,
+		               modbus_exception_name(reply->exception),
+		               survey_exception_hint(reply->exception));
 	if (answered) {
-		state->answers = true;
+		state->answers = state->answers || !gateway;
 		state->lost = 0;
 		return true;
 	}

@@ -60,7 +60,7 @@ int verb_help(int argc, char **argv)
 		return print(&out);
 	text_release(&out);
 	(void)err_set(&err, ERR_USAGE, "nothing is called '%s'%s%s%s", options.name,
-	              nearest ? "; did you mean '" : "; 'drivetrial help' lists what is",
+	              nearest ? "; did you mean '" : "; 'drivetrial help --help' lists what is",
 	              nearest ? nearest : "", nearest ? "'?" : "");
 	return session_exit_of(&err);
 }

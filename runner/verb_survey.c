@@ -82,9 +82,15 @@ static bool show(const struct survey *survey)
 	text_init(&doubts, 0);
 	survey_show(survey, &out);
 	size_t count = survey_doubts(survey, &doubts);
+	size_t silent = 0;
+	for (size_t d = 0; d < survey->rig->device_count; d++)
+		silent += !survey->device[d].answers;
+	if (silent > 0)
+		text_printf(&out, "\n%zu of %zu devices do not answer\n", silent,
+		            survey->rig->device_count);
 	if (count > 0)
 		text_printf(&out, "\n%zu to look at\n%s", count, text_string(&doubts));
-	else
+	else if (silent == 0)
 		text_puts(&out, "\nnothing looks wrong\n");
 	bool written = print(&out);
 	text_release(&out);

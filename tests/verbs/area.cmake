@@ -1,7 +1,7 @@
 # SPDX-License-Identifier: Apache-2.0
 # The verbs beside a run: plan, survey, schema, help.
 foreach(line "plan_truth.py decisions" "plan_truth.py intervals" "plan_truth.py shipped"
-        "schema_check.py")
+        "schema_check.py" "survey_served.py" "helping.py")
   separate_arguments(words UNIX_COMMAND "${line}")
   list(POP_FRONT words file)
   string(REGEX REPLACE "\\.py" "" name "${line}")
