@@ -181,7 +181,7 @@ __attribute__((format(printf, 2, 3))) static void impossible(struct forecast *re
 	(void)vsnprintf(ret->why, sizeof ret->why, format, args);
 	va_end(args);
 	ret->impossible = true;
-	ret->up = ret->down = ret->up_least = ret->down_least = INFINITY;
+	ret->up = ret->down = ret->up_least = ret->down_least = (double)INFINITY;
 }
 
 /* How many rows surely fit into a time; and at most. */
@@ -240,8 +240,8 @@ static double step_size(const struct forecast_case *c, const struct plan_mark *m
 {
 	const struct rig *rig = c->timing->rig;
 	int command = int_of(c->use, "command");
-	double step = NAN;
-	*ret_target = NAN;
+	double step = (double)NAN;
+	*ret_target = (double)NAN;
 	for (size_t i = 0; i < mark->step->assign_count; i++) {
 		const struct assignment *assign = &mark->step->assigns[i];
 		const struct unit *unit = rig->infos[assign->channel].unit;
@@ -920,7 +920,8 @@ void forecast_answer(const struct forecast_case *c, struct answered *ret)
 {
 	const struct forecaster *forecaster = forecaster_of(c);
 	bool yes_no = c->use->kind->metrics[c->limit->metric].shape == METRIC_YES_NO;
-	*ret = (struct answered){.answer = ANSWER_NONE, .sure_from = NAN, .sure_to = NAN};
+	*ret =
+	    (struct answered){.answer = ANSWER_NONE, .sure_from = (double)NAN, .sure_to = (double)NAN};
 	if (!forecaster)
 		return;
 	if (yes_no) {

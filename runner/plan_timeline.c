@@ -275,7 +275,7 @@ static int walk(const struct bench_timing *timing, struct arena *arena, struct p
 	if (!walking.commanded || !plan->mark)
 		return no_memory(reterr);
 	for (size_t c = 0; c < rig->channel_count; c++)
-		walking.commanded[c] = NAN;
+		walking.commanded[c] = (double)NAN;
 	for (size_t i = 0; i < rig->safe_state_count; i++)
 		for (size_t a = 0; a < rig->safe_state[i].assign_count; a++)
 			walking.commanded[rig->safe_state[i].assigns[a].channel] =

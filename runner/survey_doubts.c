@@ -44,7 +44,7 @@ static void narrow(struct span *span, const struct condition *condition, const c
 static struct span expected(const struct rig *rig, int index)
 {
 	const struct rig_channel *channel = &rig->channels[index];
-	struct span span = {-INFINITY, INFINITY, NULL};
+	struct span span = {-(double)INFINITY, (double)INFINITY, NULL};
 	if (channel->command && isfinite(channel->least)) {
 		span = (struct span){channel->least, channel->most, "between"};
 	}

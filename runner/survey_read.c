@@ -146,7 +146,8 @@ static void read_channel(struct survey *survey, int index)
 {
 	const struct rig_channel *channel = &survey->rig->channels[index];
 	struct survey_channel *state = &survey->channel[index];
-	*state = (struct survey_channel){.value = NAN, .last = NAN, .least = NAN, .most = NAN};
+	*state = (struct survey_channel){
+	    .value = (double)NAN, .last = (double)NAN, .least = (double)NAN, .most = (double)NAN};
 	if (channel->place == PLACE_DERIVED)
 		return;
 	bool single = is_bits(channel->place) || channel->place == PLACE_IDENTIFICATION;
@@ -305,7 +306,7 @@ void survey_again(struct survey *survey)
 	for (size_t b = 0; b < survey->plan.count; b++)
 		if (!read_block(survey, &survey->block[b]))
 			for (size_t c = 0; c < survey->plan.blocks[b].channel_count; c++)
-				survey->channel[survey->plan.blocks[b].channels[c]].value = NAN;
+				survey->channel[survey->plan.blocks[b].channels[c]].value = (double)NAN;
 }
 
 /* ---- what it means ---------------------------------------------------------------- */

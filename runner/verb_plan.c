@@ -139,10 +139,10 @@ static int plan_limits(struct plan *plan, struct plan_row *row, const json_t *kn
 			                            .plan = &row->plan,
 			                            .use = &test->checks[c],
 			                            .limit = &test->checks[c].limits[l],
-			                            .known = NAN,
-			                            .known_u = NAN,
-			                            .known_rise = NAN,
-			                            .known_spread = NAN};
+			                            .known = (double)NAN,
+			                            .known_u = (double)NAN,
+			                            .known_rise = (double)NAN,
+			                            .known_spread = (double)NAN};
 			if (known)
 				take_known(known, &one);
 			*limit = (struct plan_limit){.use = one.use, .limit = one.limit, .known = one.known};
