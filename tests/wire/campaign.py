@@ -71,7 +71,7 @@ def rig_of(plan, base):
     if not plan.proofs:
         text = re.sub(r"^    watchdog:\n(      .*\n)+", "", text, flags=re.M)
         text = re.sub(r"^direction:\n(  .*\n)+", "", text, flags=re.M)
-        text = text.replace("attendance: unattended", "attendance: attended")
+        text = text.replace("attendance: unattended", "attendance: attended\nrest_within: 6 s")
         assert "direction:" not in text and "tripped" not in text
     path = pathlib.Path(base) / f"{'-'.join(plan.wires)}-{plan.proofs}.yaml"
     path.write_text(text)
@@ -336,11 +336,13 @@ def show(outcomes):
 
 
 def short_plans():
-    return [Plan(1, ("tcp", "tcp"), None, 0.006, False, False),
-            Plan(2, ("rtu", "rtu"), "encoder-loss-missed", 0.01, False, False),
-            Plan(3, ("tcp", "rtu"), "encoder-offset", 0.006, False, False),
-            Plan(4, ("tcp", "tcp"), "overshoot", 0.03, False, True),
-            Plan(5, ("tcp", "tcp"), None, 0.003, True, False)]
+    plans = [Plan(1, ("tcp", "tcp"), None, 0.006, False, False),
+             Plan(2, ("rtu", "rtu"), "encoder-loss-missed", 0.01, False, False),
+             Plan(3, ("tcp", "rtu"), "encoder-offset", 0.006, False, False),
+             Plan(4, ("tcp", "tcp"), "overshoot", 0.03, False, True),
+             Plan(5, ("tcp", "tcp"), None, 0.003, True, False)]
+    plans[-1].cut = (2.0, "silent", LINKS)
+    return plans
 
 
 def main():
