@@ -335,9 +335,32 @@ static void time_moves_only_forward(void **state)
 	model_release(model);
 }
 
+/* It is the angle of the counts, and goes on where they begin again. */
+static void position_counts_whole_turns(void **state)
+{
+	(void)state;
+	struct model *model = bench_new(NULL);
+	bench_run(model, 10);
+	bench_drive(model, 1500, 0);
+	bench_run(model, 500);
+	double begin = bench_read(model, "controller.rotor_position");
+	bench_run(model, 1000);
+	double end = bench_read(model, "controller.rotor_position");
+	assert_near((end - begin) / (360 * DEG), 25, 0.05, "turns");
+	double counted = bench_read(model, "controller.rotor_counts") * 360 * DEG / 4096;
+	assert_near(remainder(end - counted, 360 * DEG), 0, 1e-9, "rad");
+	bench_write(model, "controller.control", 0);
+	bench_run(model, 1000);
+	bench_write(model, "controller.control", 1);
+	bench_run(model, 2);
+	assert_near(bench_read(model, "controller.rotor_position"), 180 * DEG, 181 * DEG, "rad");
+	model_release(model);
+}
+
 int main(void)
 {
 	const struct CMUnitTest tests[] = {
+	    cmocka_unit_test(position_counts_whole_turns),
 	    cmocka_unit_test(signals_have_unique_names_and_sound_rows),
 	    cmocka_unit_test(every_signal_reads_as_a_number_or_a_text),
 	    cmocka_unit_test(writes_beyond_the_range_are_refused_and_change_nothing),
