@@ -11,6 +11,8 @@
 #include <stdio.h>
 #include <string.h>
 
+#include "judge_calibration.h"
+#include "judge_population.h"
 #include "judge_series.h"
 
 struct judging {
@@ -207,7 +209,7 @@ static void reason_of(const struct test_result *result, const struct judged *jud
 }
 
 /* The verdict over all limits, with the first reason of the worst sort. */
-static void conclude_limits(struct test_result *result)
+void judge_conclude(struct test_result *result)
 {
 	struct tally tally = {0};
 	char reason[700];
@@ -246,7 +248,7 @@ static int judge_completed(struct judging *j)
 	}
 	arena_release(&scratch);
 	if (rc == 0)
-		conclude_limits(result);
+		judge_conclude(result);
 	return rc < 0 ? -1 : 0;
 }
 
@@ -382,6 +384,9 @@ void judge_totals(struct run_result *run)
 	for (size_t s = 0; s < run->suite_count; s++) {
 		struct suite_result *suite = &run->suites[s];
 		suite->totals = (struct run_totals){0};
+		judge_populations(suite);
+		if (run->facts.rig && day_of(run->facts.started_utc) > 0)
+			judge_calibrations(run->facts.rig, day_of(run->facts.started_utc), suite);
 		for (size_t t = 0; t < suite->test_count; t++) {
 			count_verdict(&suite->totals, suite->tests[t].verdict);
 			count_verdict(&run->totals, suite->tests[t].verdict);

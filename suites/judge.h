@@ -113,7 +113,8 @@ struct run_result {
 int judge_test(const struct rig *rig, const struct suite *suite, const struct test *test,
                const struct recorded_test *recorded, struct arena *arena,
                struct test_result *ret_result, struct err *reterr);
-/* Counts, and the exit code: the highest ranking of 4, 3, 1, 2, 0 that applies. */
+/* Judges populations of repeats, names instruments past their calibration, counts, and finds the
+ * exit code: the highest ranking of 4, 3, 1, 2, 0 that applies. */
 void judge_totals(struct run_result *run);
 
 #endif

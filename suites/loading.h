@@ -17,6 +17,8 @@ enum {
 	ID_MOST = 100, /* bytes of a requirement */
 };
 
+struct sweep;
+
 /* What `$name` stands for. */
 struct value {
 	const char *name;
@@ -40,6 +42,9 @@ struct loading {
 	bool groups_known; /* false: the suite's `sample` has faults */
 	/* while a test is read */
 	struct test *test;
+	const struct sweep *sweep;           /* of the test; NULL between tests */
+	const struct population *population; /* of the repeats at hand */
+	size_t population_left;              /* cases that still belong to it */
 	bool sample_known,
 	    stimulus_known;      /* false: it has faults, and what follows from them is no news */
 	enum decision_rule rule; /* of the test */
@@ -85,6 +90,11 @@ bool sweep_enter(struct loading *l, const struct sweep *sweep, size_t number, co
                  struct test *test);
 /* Takes the values of the sweep away again, and refuses those that nobody used. */
 void sweep_leave(struct loading *l, const struct sweep *sweep, const struct yaml_node *test);
+
+/* suite_tables.c */
+
+/* The node with every table over the sweep replaced by its entry at hand; NULL after a fault. */
+const struct yaml_node *tables_resolve(struct loading *l, const struct yaml_node *node);
 
 /* suite_sample.c */
 

@@ -26,6 +26,17 @@ struct check_use {
 	size_t limit_count;
 };
 
+/*
+ * How repeats are judged together. Shared by the cases of one point of a sweep,
+ * which stand side by side.
+ */
+enum repeats_judge { REPEATS_EACH = 0, REPEATS_TOLERANCE_INTERVAL, REPEATS_WORST_CASE };
+struct population {
+	enum repeats_judge judge;
+	double coverage, confidence; /* shares, of the tolerance interval */
+	size_t times;
+};
+
 /* A value of a sweep, as the name and the report show it. */
 struct sweep_value {
 	const char *name;  /* "speed" */
@@ -51,7 +62,8 @@ struct test {
 	struct mark_names marks;
 	struct sweep_value *sweep;
 	size_t sweep_count;
-	bool bench; /* bench/watchdog and bench/direction: made from the rig */
+	const struct population *population; /* of repeats judged together; NULL: each by itself */
+	bool bench;                          /* bench/watchdog and bench/direction: made from the rig */
 	bool selected;
 };
 

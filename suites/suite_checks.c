@@ -331,9 +331,9 @@ static void check_load(struct loading *l, const struct yaml_node *item)
 		           "a check is one kind with its fields: `- step_response: {...}`");
 		return;
 	}
-	const struct yaml_node *fields = item->pairs[0].value;
 	const struct check_kind *kind = kind_load(l, item->pairs[0].key);
-	if (!kind || !bind_expect(&l->binder, fields, YAML_MAPPING, kind->name))
+	const struct yaml_node *fields = tables_resolve(l, item->pairs[0].value);
+	if (!kind || !fields || !bind_expect(&l->binder, fields, YAML_MAPPING, kind->name))
 		return;
 	struct check_use use = {.kind = kind, .at = item->pairs[0].key->at};
 	use.params = arena_alloc(l->arena, kind->params_size ? kind->params_size : 1);

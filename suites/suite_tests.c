@@ -12,10 +12,12 @@
 struct test_file {
 	const char *name;
 	bool continues;
-	int decision;
+	int decision, judge_repeats;
+	double coverage, confidence;
 };
 
 static const char *const DECISIONS[] = {"guarded", "simple", NULL};
+static const char *const JUDGES[] = {"each", "tolerance_interval", "worst_case", NULL};
 
 static const struct field TEST_FIELDS[] = {
     {.key = "test",
@@ -42,7 +44,31 @@ static const struct field TEST_FIELDS[] = {
      .kind = FIELD_OWN,
      .least = 1,
      .most = 1000,
-     .text = "how many times it is run, each judged by itself"},
+     .text = "how many times it is run"},
+    {.key = "judge_repeats",
+     .kind = FIELD_CHOICE,
+     .choices = JUDGES,
+     .fallback = "each",
+     .offset = offsetof(struct test_file, judge_repeats),
+     .text = "each by itself, or all as one population: by a tolerance interval, or by the worst"},
+    {.key = "coverage",
+     .kind = FIELD_QUANTITY,
+     .dimension = &DIM_NUMBER,
+     .flags = FIELD_POSITIVE,
+     .least = 0,
+     .most = 0.999,
+     .fallback = "90 %",
+     .offset = offsetof(struct test_file, coverage),
+     .text = "tolerance_interval: the share of all that the drive will do that must conform"},
+    {.key = "confidence",
+     .kind = FIELD_QUANTITY,
+     .dimension = &DIM_NUMBER,
+     .flags = FIELD_POSITIVE,
+     .least = 0,
+     .most = 0.999,
+     .fallback = "95 %",
+     .offset = offsetof(struct test_file, confidence),
+     .text = "tolerance_interval: how sure that is to be"},
     {.key = "sample",
      .kind = FIELD_OWN,
      .text = "what is read while it runs, in place of the suite's `sample`"},
@@ -167,6 +193,40 @@ static void stimulus_of(struct loading *l, const struct yaml_node *node, struct 
 		               &test->restore_count);
 }
 
+/* The population that a case belongs to; the repeats of a point share one. */
+static void population_of(struct loading *l, const struct yaml_node *node,
+                          const struct test_file *file, struct test *test)
+{
+	const struct yaml_node *judge = yaml_get(node, "judge_repeats");
+	const struct yaml_node *coverage = yaml_get(node, "coverage");
+	const struct yaml_node *confidence = yaml_get(node, "confidence");
+	bool interval = file->judge_repeats == REPEATS_TOLERANCE_INTERVAL;
+	const struct yaml_node *idle = coverage ? coverage : confidence;
+	if (idle && !interval)
+		faults_add(l->faults, idle->at,
+		           "coverage and confidence belong to `judge_repeats: tolerance_interval`");
+	if (file->judge_repeats == REPEATS_EACH)
+		return;
+	size_t times = l->sweep ? (size_t)l->sweep->repeat : 0;
+	if (times < 3) {
+		faults_add(l->faults, judge->at, "repeats judged together are at least 3: `repeat: 20`");
+		return;
+	}
+	if (l->population_left == 0) {
+		struct population *population = arena_alloc(l->arena, sizeof *population);
+		if (!population) {
+			(void)loading_no_memory(l);
+			return;
+		}
+		*population = (struct population){(enum repeats_judge)file->judge_repeats, file->coverage,
+		                                  file->confidence, times};
+		l->population = population;
+		l->population_left = times;
+	}
+	test->population = l->population;
+	l->population_left--;
+}
+
 /* One case; the values of the sweep are in place. */
 static void case_load(struct loading *l, const struct yaml_node *node, struct test *test)
 {
@@ -176,6 +236,7 @@ static void case_load(struct loading *l, const struct yaml_node *node, struct te
 	test->continues = file.continues;
 	l->test = test;
 	l->rule = (enum decision_rule)file.decision;
+	population_of(l, node, &file, test);
 	words_of(l, node, test);
 	sample_of(l, node, test);
 	stimulus_of(l, node, test);
@@ -224,11 +285,15 @@ static void test_load(struct loading *l, const struct yaml_node *node, bool firs
 		           taken->at.line);
 	if (!sweep_load(l, node, &sweep))
 		return;
+	l->sweep = &sweep;
+	l->population_left = 0;
 	size_t before = faults_total(l->faults);
 	for (size_t i = 0; i < sweep.cases && !l->out_of_memory; i++) {
 		struct test test = {0};
-		if (!sweep_enter(l, &sweep, i, base, &test))
+		if (!sweep_enter(l, &sweep, i, base, &test)) {
+			l->sweep = NULL;
 			return;
+		}
 		case_load(l, node, &test);
 		const struct yaml_node *continues = yaml_get(node, "continues");
 		if (first && i == 0 && test.continues)
@@ -239,6 +304,7 @@ static void test_load(struct loading *l, const struct yaml_node *node, bool firs
 	}
 	if (faults_total(l->faults) == before)
 		sweep_leave(l, &sweep, node);
+	l->sweep = NULL;
 	l->value_count = l->suite_value_count;
 }
 

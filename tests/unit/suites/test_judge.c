@@ -232,7 +232,7 @@ static void a_check_that_breaks_makes_the_test_an_error(void **state)
 static void checks_are_told_the_shortest_interval(void **state)
 {
 	struct fixture *f = *state;
-	struct sample_group groups[] = {{100 * NS_PER_MS, NULL, 0}, {2 * NS_PER_MS, NULL, 0}};
+	struct sample_group groups[] = {{.every_ns = 100 * NS_PER_MS}, {.every_ns = 2 * NS_PER_MS}};
 	f->tests[1].groups = groups;
 	f->tests[1].group_count = 2;
 	f->use.kind = &BROKEN_CHECK;
