@@ -248,8 +248,9 @@ static void step_bands(const struct chart *chart, const struct chart_scale *scal
 	else
 		outside(chart, x0, y, scale->x1, scale->y_low);
 	chart_line(chart->out, x0, y, scale->x1, y, "#9b2335", "2 3");
-	chart_label(chart->out, scale->x1 - 4, step.sign > 0 ? y - 4 : y + 11, "end", "#9b2335",
-	            "overshoot at most");
+	const struct chart_place places[] = {{scale->x1 - 4, step.sign > 0 ? y - 4 : y + 11, "end"},
+	                                     {scale->x1 - 4, step.sign > 0 ? y + 11 : y - 4, "end"}};
+	chart_place_label(chart->words, chart->out, places, 2, "#9b2335", "overshoot at most");
 }
 
 static void limit_lines(const struct chart *chart, const struct chart_scale *scale)
@@ -273,8 +274,11 @@ static void limit_lines(const struct chart *chart, const struct chart_scale *sca
 					outside(chart, scale->x0, i == 0 ? y : scale->y_high, scale->x1,
 					        i == 0 ? scale->y_low : y);
 					chart_line(chart->out, scale->x0, y, scale->x1, y, "#9b2335", "2 3");
-					chart_label(chart->out, scale->x1 - 4, i == 0 ? y + 11 : y - 4, "end",
-					            "#9b2335", text);
+					const struct chart_place places[] = {
+					    {scale->x1 - 4, i == 0 ? y + 11 : y - 4, "end"},
+					    {scale->x1 - 4, i == 0 ? y - 4 : y + 11, "end"},
+					    {scale->x1 - 170, y - 4, "end"}};
+					chart_place_label(chart->words, chart->out, places, 3, "#9b2335", text);
 					continue;
 				}
 				double x = chart_x(scale, (double)mark->latest_ns + values[i] * 1e9);
@@ -284,18 +288,31 @@ static void limit_lines(const struct chart *chart, const struct chart_scale *sca
 					outside(chart, x, scale->y_low - 7, scale->x1, scale->y_low);
 				chart_line(chart->out, x, scale->y_high, x, scale->y_low, "#9b2335", "2 3");
 				bool right = x > (scale->x0 + scale->x1) / 2;
-				chart_label(chart->out, right ? x - 3 : x + 3,
-				            scale->y_low - 10 - 12.0 * (double)(m % 4), right ? "end" : "start",
-				            "#9b2335", text);
+				struct chart_place places[8];
+				for (int row = 0; row < 8; row++)
+					places[row] =
+					    (struct chart_place){right ? x - 3 : x + 3, scale->y_low - 10 - 13.0 * row,
+					                         right ? "end" : "start"};
+				chart_place_label(chart->words, chart->out, places, 8, "#9b2335", text);
 			}
 		}
 	}
 }
 
+static void mark_name(const struct chart *chart, const struct chart_scale *scale, double x,
+                      const char *name)
+{
+	struct chart_place places[8];
+	for (int row = 0; row < 4; row++) {
+		places[row] = (struct chart_place){x + 3, scale->y_high + 11 + 13.0 * row, "start"};
+		places[row + 4] = (struct chart_place){x - 3, scale->y_high + 11 + 13.0 * row, "end"};
+	}
+	chart_place_label(chart->words, chart->out, places, 8, "#5a5547", name);
+}
+
 static void mark_bands(const struct chart *chart, const struct chart_scale *scale, bool named)
 {
 	const struct recorded_test *recorded = chart->test->recorded;
-	int row = 0;
 	for (size_t i = 0; i < recorded->mark_count; i++) {
 		const struct mark *mark = &recorded->marks[i];
 		if (!mark->reached || mark->latest_ns < chart->t0_ns || mark->earliest_ns > chart->t1_ns)
@@ -305,8 +322,7 @@ static void mark_bands(const struct chart *chart, const struct chart_scale *scal
 		chart_rectangle(chart->out, x1, scale->y_high, fmax(x2 - x1, 1),
 		                scale->y_low - scale->y_high, "#6b6658", x2 - x1 < 3 ? "0.6" : "0.2");
 		if (named)
-			chart_label(chart->out, x1 + 3, scale->y_high + 11 + 12.0 * (row++ % LABELS_ROWS),
-			            "start", "#5a5547", mark->name);
+			mark_name(chart, scale, x1, mark->name);
 	}
 }
 
@@ -347,11 +363,20 @@ static void metric_points(const struct chart *chart, const struct chart_scale *s
 			chart_rectangle(chart->out, x1 - 1.5, y - 2, fmax(x2 - x1, 0) + 3, 4, "#111111",
 			                "0.75");
 			(void)snprintf(number, sizeof number, "%d", ++count);
-			if (on_axis)
-				chart_label(chart->out, (x1 + x2) / 2, count % 2 ? y - 5 : y + 13, "middle",
-				            "#111111", number);
-			else
-				chart_label(chart->out, x2 + 5, y + 4, "start", "#111111", number);
+			double middle = on_axis ? (x1 + x2) / 2 : x2 + 5;
+			const char *anchor = on_axis ? "middle" : "start";
+			const struct chart_place places[] = {{middle, on_axis ? y - 5 : y + 4, anchor},
+			                                     {middle, y + 13, anchor},
+			                                     {x2 + 5, y + 4, "start"},
+			                                     {x1 - 5, y + 4, "end"},
+			                                     {middle, y - 18, anchor},
+			                                     {middle, y + 26, anchor},
+			                                     {middle + 12, y - 18, anchor},
+			                                     {middle + 12, y + 26, anchor},
+			                                     {middle + 24, y - 5, anchor},
+			                                     {middle + 24, y + 13, anchor}};
+			chart_place_label(chart->words, chart->out, places, sizeof places / sizeof *places,
+			                  "#111111", number);
 		}
 	}
 }
@@ -444,7 +469,9 @@ bool chart_possible(const struct rig *rig, const struct test_result *test,
 void chart_write(struct xml_out *out, const struct rig *rig, const struct test_result *test,
                  const struct check_result *check, const char *id, int columns)
 {
-	struct chart chart = {.out = out, .rig = rig, .test = test, .check = check, .id = id};
+	struct chart_words words = {.count = 0};
+	struct chart chart = {
+	    .words = &words, .out = out, .rig = rig, .test = test, .check = check, .id = id};
 	chart.columns = columns < CHART_COLUMNS_LEAST  ? CHART_COLUMNS_LEAST
 	                : columns > CHART_COLUMNS_MOST ? CHART_COLUMNS_MOST
 	                                               : columns;

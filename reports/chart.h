@@ -24,14 +24,23 @@ void chart_write(struct xml_out *out, const struct rig *rig, const struct test_r
 
 /* ---- shared by chart.c and chart_axes.c ------------------------------------- */
 
-enum { PANELS_MOST = 3, POINTS_MOST = 12, TICKS_MOST = 12, LABELS_ROWS = 2 };
+enum { PANELS_MOST = 3, POINTS_MOST = 12, TICKS_MOST = 12 };
 
 /* Sizes in the units of the viewBox. */
 #define CHART_WIDTH 760.0
 #define CHART_LEFT  96.0
 #define CHART_RIGHT 22.0
 
+/* Where words stand already, so that the next ones find a free place. */
+struct chart_words {
+	struct {
+		double x1, y1, x2, y2;
+	} boxes[80];
+	size_t count;
+};
+
 struct chart {
+	struct chart_words *words;
 	struct xml_out *out;
 	const struct rig *rig;
 	const struct test_result *test;
@@ -73,6 +82,17 @@ void chart_rectangle(struct xml_out *out, double x, double y, double width, doub
                      const char *fill, const char *opacity);
 void chart_label(struct xml_out *out, double x, double y, const char *anchor, const char *fill,
                  const char *text);
+/*
+ * A label at the first of `count` places that is free, the last one where none
+ * is. x and y as of chart_label(), anchors "start", "middle" or "end".
+ */
+struct chart_place {
+	double x, y;
+	const char *anchor;
+};
+void chart_place_label(struct chart_words *words, struct xml_out *out,
+                       const struct chart_place *places, size_t count, const char *fill,
+                       const char *text);
 void chart_y_axis(const struct chart *chart, const struct chart_scale *scale,
                   const struct channel_info *info);
 void chart_x_axis(const struct chart *chart, double bottom);

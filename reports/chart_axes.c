@@ -3,6 +3,7 @@
  */
 #include <math.h>
 #include <stdio.h>
+#include <string.h>
 
 #include "chart.h"
 
@@ -44,6 +45,41 @@ void chart_label(struct xml_out *out, double x, double y, const char *anchor, co
 	xml_attr(out, "fill", fill);
 	xml_text(out, text);
 	xml_close(out);
+}
+
+/* About as wide as sans-serif letters of this size are; too wide does no harm. */
+static double word_width(const char *text)
+{
+	return 6.6 * (double)text_columns(text, strlen(text));
+}
+
+void chart_place_label(struct chart_words *words, struct xml_out *out,
+                       const struct chart_place *places, size_t count, const char *fill,
+                       const char *text)
+{
+	double width = word_width(text);
+	for (size_t i = 0; i < count; i++) {
+		const struct chart_place *place = &places[i];
+		double x1 = place->anchor[0] == 's'   ? place->x
+		            : place->anchor[0] == 'e' ? place->x - width
+		                                      : place->x - width / 2;
+		double y1 = place->y - 10, x2 = x1 + width, y2 = place->y + 3;
+		bool is_free = true;
+		for (size_t w = 0; w < words->count; w++)
+			is_free = is_free && (x2 <= words->boxes[w].x1 || x1 >= words->boxes[w].x2 ||
+			                      y2 <= words->boxes[w].y1 || y1 >= words->boxes[w].y2);
+		bool inside = x1 >= CHART_LEFT - 4 && x2 <= CHART_WIDTH;
+		if (!(is_free && inside) && i + 1 < count)
+			continue;
+		if (words->count < sizeof words->boxes / sizeof words->boxes[0]) {
+			words->boxes[words->count].x1 = x1;
+			words->boxes[words->count].y1 = y1;
+			words->boxes[words->count].x2 = x2;
+			words->boxes[words->count++].y2 = y2;
+		}
+		chart_label(out, place->x, place->y, place->anchor, fill, text);
+		return;
+	}
 }
 
 void chart_begin(struct xml_out *out, const char *id, double height, const char *title)
@@ -103,8 +139,12 @@ void chart_y_axis(const struct chart *chart, const struct chart_scale *scale,
 			chart_line(chart->out, scale->x0, chart_y(scale, value), scale->x1,
 			           chart_y(scale, value), "#ddd8ca", NULL);
 			(void)snprintf(text, sizeof text, "%.15s", info->value_names[i]);
+			/* Long names get smaller letters, to stay in their margin. */
+			xml_open(chart->out, "g");
+			xml_attr(chart->out, "font-size", strlen(text) > 12 ? "9" : "11");
 			chart_label(chart->out, scale->x0 - 6, chart_y(scale, value) + 4, "end", "#3a3833",
 			            text);
+			xml_close(chart->out);
 		}
 		return;
 	}
