@@ -327,13 +327,17 @@ static void settling_time(const struct forecast_case *c, double value, struct fo
 	struct stepping s;
 	if (!stepping_of(c, &s, ret))
 		return;
-	(void)value;
 	/* From the last row outside to the first of rows that all are inside; rows that noise or the
 	 * edge's own uncertainty put in doubt add one interval, averaging its half length. */
 	double band = number_of(c->use, "band") * s.hundred, sigma = s.f.q / sqrt(12);
 	double averaged = band > 0 ? fmax(0, (144 * sigma * sigma / (band * band) - 1) / 2) : 0;
 	double reach = ceil(averaged) * s.f.h_most;
 	double width = 2 * s.f.h_most + s.f.w_most + s.m_most + reach;
+	/* With few samples on the way up the answer may leave the band unseen, up to four
+	 * times the time that it seems to take. */
+	double rise = isnan(c->known_rise) ? value / 2 : c->known_rise;
+	if (4 * s.f.h_most > rise)
+		width = fmax(width, 4 * (rise + 2 * s.f.h_most + s.f.w_most) + s.m_most - value);
 	same_all(ret, width, 0);
 	ret->formula = "from the last row outside the band to the first inside: 2 h + w + m";
 }
