@@ -7,6 +7,7 @@
  */
 #include "capture.h"
 
+#include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -58,8 +59,40 @@ static void close_writers(struct capture *capture)
 	capture->generation = -1;
 }
 
+/* A line for a person: the time, the event as in the journal, and what it is about. */
+static void tell_event(const struct capture *capture, const struct journal_event *event)
+{
+	struct text text;
+	if (event->kind == JOURNAL_BLOCK || event->kind == JOURNAL_HEARTBEAT ||
+	    event->kind == JOURNAL_LINK_COUNTS)
+		return;
+	text_init(&text, 4096);
+	text_printf(&text, "%12.6f s  %-13s", (double)event->time_ns * 1e-9,
+	            journal_kind_name(event->kind));
+	if (event->suite >= 0 && event->test >= 0) {
+		const char *name = capture->suites[event->suite]->tests[event->test].name;
+		text_puts(&text, "  ");
+		text_add_line(&text, name, strlen(name));
+	}
+	if (event->channel >= 0 && !isnan(event->value)) {
+		const struct channel_info *info = &capture->rig->infos[event->channel];
+		bool plain = info->unit == unit_one();
+		text_printf(&text, "  %s = %.6g%s%s", info->name, event->value, plain ? "" : " ",
+		            plain ? "" : info->unit->name);
+	}
+	if (event->link >= 0)
+		text_printf(&text, "  %s", capture->rig->links[event->link].name);
+	text_puts(&text, "  ");
+	text_add_line(&text, event->name, strlen(event->name));
+	text_add_line(&text, event->text, strlen(event->text));
+	(void)fprintf(stderr, "%s\n", text_string(&text));
+	text_release(&text);
+}
+
 static void write_event(struct capture *capture, const struct journal_event *event)
 {
+	if (capture->verbose)
+		tell_event(capture, event);
 	if (!capture->failed)
 		check(capture, journal_write(capture->journal, event, &capture->err));
 }

@@ -23,6 +23,7 @@ struct capture {
 	uint64_t rows;
 	int64_t flushed_ns, heartbeat_ns;
 	bool failed;
+	bool verbose;   /* what happens is told on stderr too, one line an event */
 	struct err err; /* the first failure */
 };
 

@@ -121,7 +121,9 @@ int engine_real(struct session *session)
 		(void)fprintf(stderr, "drivetrial: cannot watch for signals: %s\n", strerror(errno));
 		return EXIT_INTERNAL;
 	}
-	progress_init(&line, session->options->quiet);
+	/* Lines of its own would tear a progress line. */
+	progress_init(&line, session->options->quiet || session->options->verbose);
+	session->capture.verbose = session->options->verbose;
 	if (session->options->realtime)
 		realtime_begin(&realtime);
 	if (start(session, &crew) < 0) {

@@ -33,7 +33,9 @@ int64_t engine_settle(struct session *session)
 int engine_virtual(struct session *session)
 {
 	struct progress_line line;
-	progress_init(&line, session->options->quiet);
+	/* Lines of its own would tear a progress line. */
+	progress_init(&line, session->options->quiet || session->options->verbose);
+	session->capture.verbose = session->options->verbose;
 	for (unsigned long loops = 0; !conductor_ended(session->conductor); loops++) {
 		int64_t due = engine_settle(session);
 		int suite, test;

@@ -19,6 +19,7 @@ static const struct option_row RUN_ROWS[] = {
     {"link", true, "LINK=ADDRESS: another address, tcp:HOST:PORT or rtu:/dev/PATH"},
     {"realtime", false, "real-time scheduling and locked memory, as far as they are allowed"},
     {"quiet", false, "no progress"},
+    {"verbose", false, "each step, command, mark and fault on stderr as it happens"},
     {"help", false, "this text"},
 };
 
@@ -32,6 +33,7 @@ static const struct option_row REHEARSE_ROWS[] = {
     {"defect", true, "NAME: builds the controller wrong in a named way; 'list' shows them"},
     {"seed", true, "N: of noise and timing; default 1"},
     {"quiet", false, "no progress"},
+    {"verbose", false, "each step, command, mark and fault on stderr as it happens"},
     {"help", false, "this text"},
 };
 
@@ -118,6 +120,8 @@ int run_option_take(struct run_options *options, const char *name, const char *v
 		options->defect = value;
 	else if (strcmp(name, "quiet") == 0)
 		options->quiet = true;
+	else if (strcmp(name, "verbose") == 0)
+		options->verbose = true;
 	else if (strcmp(name, "realtime") == 0)
 		options->realtime = true;
 	else if (strcmp(name, "wait") == 0)
