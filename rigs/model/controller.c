@@ -33,9 +33,9 @@ static double most_torque(const struct controller *c)
 {
 	double dl = c->lq_h - c->ld_h, most = c->current_most_a, psi = c->flux_wb;
 	if (dl == 0 || defect_in(c->defects, DEFECT_MTPA_OFF))
-		return torque_of(c, 0, most);
+		return drive_torque_of(c, 0, most);
 	double d = (psi - sqrt(psi * psi + 8 * dl * dl * most * most)) / (4 * dl);
-	return torque_of(c, d, sqrt(most * most - d * d));
+	return drive_torque_of(c, d, sqrt(most * most - d * d));
 }
 
 void controller_start(struct controller *controller, const struct controller_tuning *tuning)

@@ -34,7 +34,7 @@ void current_loops_tune(struct controller *controller, const struct controller_t
 	loops->integral_share_q = controller->period_s * tuning->resistance_ohm / controller->lq_h;
 }
 
-double torque_of(const struct controller *c, double current_d_a, double current_q_a)
+double drive_torque_of(const struct controller *c, double current_d_a, double current_q_a)
 {
 	return 1.5 * c->pole_pairs * (c->flux_wb + (c->ld_h - c->lq_h) * current_d_a) * current_q_a;
 }

@@ -160,7 +160,7 @@ double speed_loop_step(struct speed_loop *loop, double command_rad_s, double spe
 
 /* current_loop.c: from current commands to duties. */
 void current_loops_tune(struct controller *controller, const struct controller_tuning *tuning);
-double torque_of(const struct controller *controller, double current_d_a, double current_q_a);
+double drive_torque_of(const struct controller *controller, double current_d_a, double current_q_a);
 /* io_q: a first guess, then the answer. Only for machines with saliency. */
 void current_for_torque(const struct controller *controller, double torque_nm, double *io_q,
                         double *ret_d);
