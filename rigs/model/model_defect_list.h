@@ -34,7 +34,7 @@ DEFECT(INDEX_DRIFTING, "index-drifting", "alignment",
 DEFECT(SINE_ERROR, "sine-error", "stays_within",
        "the believed angle has an error of 10 deg electrical amplitude once per turn")
 /* modulation */
-DEFECT(PHASE_DUTY_WRONG, "phase-duty-wrong", "stays_within",
+DEFECT(PHASE_DUTY_WRONG, "phase-duty-wrong", "modulation",
        "the duty of phase b is 8 % too small")
 DEFECT(NULL_STATES_UNEQUAL, "null-states-unequal", "stays_within",
        "only the lower null state is used: the null time is not shared")
