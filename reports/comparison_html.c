@@ -129,6 +129,7 @@ static void metric_row(struct xml_out *out, const struct comparison *all,
 		          metric->lost > 0 ? "lost" : "gained");
 	xml_close(out);
 	xml_open(out, "td");
+	xml_attr(out, "class", "word");
 	xml_text(out, metric->worse ? "worse" : metric->significant ? "changed" : "not significant");
 	if (metric->flipped)
 		xml_textf(out, "; %s to %s", metric->values[0].verdict, metric->values[last].verdict);

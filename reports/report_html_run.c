@@ -25,6 +25,11 @@ static void suite_terms(struct xml_out *out, const struct run_result *run, size_
 	           "fail only where it lies wholly outside, else inconclusive (guard band = expanded "
 	           "uncertainty, as in JCGM 106)"
 	         : "simple: by the value alone; the uncertainty is shown and does not decide");
+	for (size_t i = 0; i < suite->expect_count; i++) {
+		(void)snprintf(text, sizeof text, "%.100s %.300s, else the run is refused",
+		               suite->expect[i].key, suite->expect[i].text);
+		term(out, "Expected", text);
+	}
 	for (size_t i = 0; i < suite->value_count; i++)
 		if (suite->values[i].overridden) {
 			(void)snprintf(text, sizeof text, "%.100s = %.300s", suite->values[i].name,
@@ -186,8 +191,11 @@ static void instruments(struct xml_out *out, const struct run_facts *facts)
 		accuracy_text(info, limits, sizeof limits);
 		if (info->accuracy.calibrated_until_day > 0) {
 			date_text(info->accuracy.calibrated_until_day, until, sizeof until);
-			if (html_out_of_date(facts, &info->accuracy))
-				(void)strncat(until, " (out of date)", sizeof until - strlen(until) - 1);
+			(void)strncat(until,
+			              html_out_of_date(facts, &info->accuracy) ? " (out of date)"
+			              : facts->started_utc[0]                  ? " (in date)"
+			                                                       : "",
+			              sizeof until - strlen(until) - 1);
 		}
 		row_of(out, "td",
 		       (const char *const[]){info->name, info->device ? info->device : "",

@@ -229,7 +229,7 @@ int run_folder_finish(const struct run_folder *folder, const char *name, int fd,
 	char part[FOLDER_NAME_MOST + 8];
 	part_name(name, part, sizeof part);
 	int rc = good ? 0 : -1, cause = errno;
-	if (good && fsync(fd) < 0) {
+	if (good && !folder->together && fsync(fd) < 0) {
 		rc = -1;
 		cause = errno;
 	}
@@ -246,8 +246,15 @@ int run_folder_finish(const struct run_folder *folder, const char *name, int fd,
 		errno = cause;
 		return folder_cannot(reterr, folder->path, name, "write");
 	}
-	(void)fsync(folder->fd); /* the name itself; where a file system cannot, nothing is lost */
+	if (!folder->together)
+		(void)fsync(folder->fd); /* the name itself; where a file system cannot, nothing is lost */
 	return 0;
+}
+
+int run_folder_sync(struct run_folder *folder, struct err *reterr)
+{
+	folder->together = false;
+	return syncfs(folder->fd) < 0 ? folder_cannot(reterr, folder->path, "samples", "flush") : 0;
 }
 
 int run_folder_write(const struct run_folder *folder, const char *name, const char *bytes,

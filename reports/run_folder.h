@@ -17,7 +17,12 @@
 struct run_folder {
 	char path[1024];
 	int fd; /* of the folder; outputs are opened below it */
+	/* Files are not flushed one by one: run_folder_sync() does it for all. For copies, in
+	 * thousands. */
+	bool together;
 };
+/* Everything that was written goes to the disk; ends `together`. Errors: ERR_OUTPUT. */
+int run_folder_sync(struct run_folder *folder, struct err *reterr);
 
 /* path NULL: runs/<utc>-<rig> below the current folder. Refuses an existing one. */
 int run_folder_new(const char *path, const char *utc, const char *rig,

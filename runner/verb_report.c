@@ -266,9 +266,10 @@ static int rebuild(struct rebuilding *r, const struct report_options *options, c
 	    run_folder_new(options->out, NULL, r->rig->name, &out, &err) < 0)
 		return session_exit_of(&err);
 	int code = r->run.exit_code;
+	out.together = true;
 	if (copy_recording(options, r->suites, r->head.suite_count, &out, &err) < 0 ||
-	    name_parent(options, &out, hash, &err) < 0 || reports_write(&r->run, &out, &err) < 0 ||
-	    run_folder_seal(&out, &err) < 0)
+	    run_folder_sync(&out, &err) < 0 || name_parent(options, &out, hash, &err) < 0 ||
+	    reports_write(&r->run, &out, &err) < 0 || run_folder_seal(&out, &err) < 0)
 		code = session_exit_of(&err);
 	else
 		summary_print(&r->run, isatty(STDOUT_FILENO) && !getenv("NO_COLOR"), stdout);
