@@ -21,6 +21,7 @@
  */
 #include "worker.h"
 
+#include <semaphore.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -76,7 +77,7 @@ struct worker {
 	struct ring rows, events;
 	/* shared */
 	pthread_mutex_t mutex;
-	pthread_cond_t cond;
+	sem_t wakes; /* posted once for each time that woken becomes true */
 	bool woken, quit, rest, renew, fresh;
 	enum job_state job;
 	bool job_dropped, job_attempt;
@@ -131,7 +132,7 @@ int worker_new(const struct worker_config *config, struct worker **ret_worker, s
 	(void)pthread_mutexattr_setprotocol(&attributes, PTHREAD_PRIO_INHERIT);
 	(void)pthread_mutex_init(&worker->mutex, &attributes);
 	(void)pthread_mutexattr_destroy(&attributes);
-	(void)pthread_cond_init(&worker->cond, NULL);
+	(void)sem_init(&worker->wakes, 0, 0);
 	if (!worker->devices || !worker->latest || !worker->row ||
 	    ring_init(&worker->rows, row_size, 16384, reterr) < 0 ||
 	    ring_init(&worker->events, sizeof(struct journal_event), 256, reterr) < 0 ||
@@ -160,7 +161,7 @@ void worker_free(struct worker *worker)
 	free(worker->devices);
 	free(worker->latest);
 	free(worker->row);
-	(void)pthread_cond_destroy(&worker->cond);
+	(void)sem_destroy(&worker->wakes);
 	(void)pthread_mutex_destroy(&worker->mutex);
 	free(worker);
 }
@@ -738,10 +739,13 @@ int64_t worker_tick(struct worker *worker, int64_t now_ns)
 
 /* ---- the thread -------------------------------------------------------- */
 
-/* Waits until shortly before due_ns, or for a wake; a second at most. Mutex held. True: woken. */
+/*
+ * Waits until shortly before due_ns, or for a wake. True: woken. By a semaphore,
+ * since a wait for a condition takes the mutex again: a system call more a row.
+ */
 static bool wait_until(struct worker *worker, int64_t due_ns)
 {
-	while (!worker->quit && !worker->woken) {
+	for (;;) {
 		/* First this clock, so that a thread held up in between wakes early, not late. */
 		struct timespec at;
 		(void)clock_gettime(CLOCK_MONOTONIC, &at);
@@ -751,9 +755,9 @@ static bool wait_until(struct worker *worker, int64_t due_ns)
 		int64_t ns = at.tv_nsec + (left > NS_PER_S ? NS_PER_S : left);
 		at.tv_sec += ns / NS_PER_S;
 		at.tv_nsec = ns % NS_PER_S;
-		(void)pthread_cond_clockwait(&worker->cond, &worker->mutex, CLOCK_MONOTONIC, &at);
+		if (sem_clockwait(&worker->wakes, CLOCK_MONOTONIC, &at) == 0)
+			return true;
 	}
-	return true;
 }
 
 void worker_loop(struct worker *worker)
@@ -761,8 +765,10 @@ void worker_loop(struct worker *worker)
 	(void)prctl(PR_SET_TIMERSLACK, 1UL);
 	for (;;) {
 		int64_t due = worker_tick(worker, clock_now(&worker->config.clock));
-		lock(worker);
 		bool woken = wait_until(worker, due);
+		lock(worker);
+		if (worker->woken && !woken) /* it came after the wait: what it announces is seen now */
+			(void)sem_trywait(&worker->wakes);
 		worker->woken = false;
 		bool quit = worker->quit;
 		unlock(worker);
@@ -781,8 +787,9 @@ void worker_spin(struct worker *worker, int64_t spin_ns)
 
 static void wake_worker(struct worker *worker)
 {
+	if (!worker->woken)
+		(void)sem_post(&worker->wakes);
 	worker->woken = true;
-	(void)pthread_cond_signal(&worker->cond);
 }
 
 void worker_quit(struct worker *worker)

@@ -16,6 +16,7 @@
 
 int waking_init(struct waking *waking)
 {
+	atomic_init(&waking->signalled, false);
 	waking->event_fd = eventfd(0, EFD_CLOEXEC | EFD_NONBLOCK);
 	return waking->event_fd < 0 ? -1 : 0;
 }
@@ -29,13 +30,16 @@ void waking_release(struct waking *waking)
 
 void waking_signal(struct waking *waking)
 {
+	/* In this order: a flag without a count is harmless, a count without a flag would stay. */
 	(void)eventfd_write(waking->event_fd, 1);
+	atomic_store(&waking->signalled, true);
 }
 
 void waking_clear(struct waking *waking)
 {
 	eventfd_t count;
-	(void)eventfd_read(waking->event_fd, &count);
+	if (atomic_exchange(&waking->signalled, false))
+		(void)eventfd_read(waking->event_fd, &count);
 }
 
 int64_t waiting_now(void)

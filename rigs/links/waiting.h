@@ -7,10 +7,13 @@
  * it. Only waking_signal() may be called by other threads; it is safe at any
  * time between waking_init() and waking_release().
  */
+#include <stdatomic.h>
+#include <stdbool.h>
 #include <stdint.h>
 
 struct waking {
 	int event_fd;
+	atomic_bool signalled; /* there may be something to clear: saves a system call a request */
 };
 
 enum waited { WAITED_READY, WAITED_TIMEOUT, WAITED_STOPPED, WAITED_FAILED };

@@ -45,8 +45,8 @@ static struct link *start(struct peer *peer, void (*script)(struct peer *), int6
 
 static void finish(struct peer *peer, struct link *link)
 {
+	peer_join(peer); /* first: a link is released only once nobody interrupts it */
 	link_release(link);
-	peer_join(peer);
 	if (peer->fd > 0)
 		(void)close(peer->fd);
 	(void)close(peer->listener);
