@@ -158,9 +158,9 @@ static int html_write(const struct run_result *run, const struct run_folder *fol
 	xml_open(&out, "body");
 	header(&out, run);
 	xml_open(&out, "main");
-	html_abnormal(&out, run);
 	html_identity(&out, run);
 	cautions(&out);
+	html_abnormal(&out, run);
 	html_failures(&out, run, columns);
 	html_tests(&out, run);
 	html_requirements(&out, run);

@@ -94,7 +94,8 @@ def html(run):
         check(bad not in data.lower(), "the page has %s" % bad)
     # Elements that HTML does not keep empty must not be closed as if they were.
     for name in re.findall(rb"<([a-z0-9]+)[^<>]*/>", data):
-        check(name in (b"meta", b"link", b"line", b"rect", b"polyline", b"circle"),
+        check(name in (b"meta", b"link", b"line", b"rect", b"polyline", b"circle", b"path",
+                       b"wbr"),
               "<%s/> is no empty element of HTML" % name.decode())
     root = tree.fromstring(data)
     body = root.find(XHTML + "body")
@@ -104,7 +105,8 @@ def html(run):
         check(part in header, "'%s' is not at the top: %s" % (part, header))
     heads = [text_of(h) for h in root.iter(XHTML + "h2")]
     check(heads == ["What was run", "Cautions", "What to know before the good news",
-                    "What did not pass", "All tests", "Each test"], "order: %s" % heads)
+                    "What did not pass", "All tests", "Requirements", "Each test", "Sign-off"],
+          "order: %s" % heads)
     page = text_of(body)
     for part in ("half_speed = 1200 rpm", "SRS-112", "set speed_command", "await", "self-reported",
                  "refused with exception 3", "slow_speed_loop", "2025-12-28 (out of date)",
