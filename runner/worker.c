@@ -143,9 +143,9 @@ int worker_new(const struct worker_config *config, struct worker **ret_worker, s
 		return -1;
 	}
 	for (size_t i = 0; i < rig->channel_count; i++)
-		worker->latest[i] = NAN;
+		worker->latest[i] = (double)NAN;
 	for (size_t i = 0; i < rig->device_count; i++)
-		worker->devices[i].life = NAN;
+		worker->devices[i].life = (double)NAN;
 	*ret_worker = worker;
 	return 0;
 }
@@ -176,7 +176,7 @@ static void tell(struct worker *worker, int64_t now_ns, const char *text)
 	                              .device = -1,
 	                              .link = worker->config.link_index,
 	                              .channel = -1,
-	                              .value = NAN};
+	                              .value = (double)NAN};
 	(void)snprintf(event.text, sizeof event.text, "%s", text);
 	(void)ring_push(&worker->events, &event, sizeof event);
 	lock(worker);
@@ -518,7 +518,7 @@ static void adopt_plan(struct worker *worker, int64_t now_ns)
 				worker->longest_period_ns = worker->plan->groups[i].period_ns;
 		/* What was not read lately is not known. */
 		for (size_t i = 0; i < worker->rig->channel_count; i++)
-			worker->latest[i] = NAN;
+			worker->latest[i] = (double)NAN;
 	}
 	unlock(worker);
 }
@@ -861,7 +861,7 @@ void worker_silence(struct worker *worker, int device, bool silent)
 	if (!silent) {
 		/* The silence itself is no staleness, and no standing life counter. */
 		worker->devices[device].last_good_ns = clock_now(&worker->config.clock);
-		worker->devices[device].life = NAN;
+		worker->devices[device].life = (double)NAN;
 	}
 	wake_worker(worker);
 	unlock(worker);
