@@ -111,12 +111,14 @@ static void look_at(const struct point *p, double minimum, size_t row, struct ex
 	double limit = p->dc / sqrt(3);
 	/* Three unit vectors 120 deg apart with signs add up to 2 at most, times 2/3. */
 	double made_doubt = 4.0 / 3 * p->duty_doubt * p->dc;
+	/* What is made, as a part of the limit, hangs on the duties alone; what is told on Vdc too. */
+	double relative = p->dc > p->dc_doubt ? p->dc_doubt / (p->dc - p->dc_doubt) : (double)INFINITY;
 	double least = fmax(a, fmax(b, c)) - fmin(a, fmin(b, c));
 	extreme_add(&out[NULL_SHARE], -100 * (1 - least), 200 * p->duty_doubt, row);
 	extreme_add(&out[LINEAR_USE], 100 * told / limit,
-	            100 * (p->command_doubt + told * p->dc_doubt / p->dc) / limit, row);
+	            100 * (p->command_doubt + told * relative) / limit, row);
 	extreme_add(&out[MAGNITUDE_ERROR], 100 * fabs(made - told) / limit,
-	            100 * (made_doubt + p->command_doubt + made * p->dc_doubt / p->dc) / limit, row);
+	            100 * (made_doubt + (p->command_doubt + told * relative)) / limit, row);
 	if (!(told - p->command_doubt >= minimum * limit))
 		return;
 	double error = wrap_half(atan2(beta, alpha) - atan2(p->beta, p->alpha), 2 * PI);

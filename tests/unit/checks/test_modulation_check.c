@@ -123,7 +123,7 @@ static void coding_and_instrument_leave_doubt(void **state)
 	assert_edges(angle);
 	assert_int_equal(decided(angle, -1, 0.05), VERDICT_INCONCLUSIVE);
 	bench.rec.channels[bench.dc].accuracy = (struct accuracy){.given = true, .of_reading = 0.01};
-	assert_near(run(&bench, "vector_magnitude_error")->high, 100 * 1.2 / 173.205081, 1e-3, "%");
+	assert_near(run(&bench, "vector_magnitude_error")->high, 100 * (0.2 + 100 * 0.01 / 0.99) / 173.205081, 1e-3, "%");
 	assert_edges(run(&bench, "linear_use"));
 	assert_edges(run(&bench, "null_share"));
 	recording_release(&bench.rec);

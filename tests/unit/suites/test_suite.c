@@ -86,6 +86,37 @@ static void sweeps_and_repeats_become_cases_in_the_order_of_nested_loops(void **
 	assert_string_equal(f->suite->tests[5].sweep[0].shown, "1500 rpm");
 }
 
+static void a_limit_tabled_over_the_sweep_takes_the_entry_of_its_point(void **state)
+{
+	(void)state;
+	struct fixture f;
+	static const char *const NAMES[] = {"SPD-01[speed=500rpm]", "SPD-01[speed=1500rpm]"};
+	load_with(&f, SOURCE_DIR "/tests/golden/suite-table-good/rig.yaml",
+	          SOURCE_DIR "/tests/golden/suite-table-good/suite.yaml", NULL, 0);
+	for (int i = 0; i < 2; i++) {
+		const struct check_use *use = &test_named(&f, NAMES[i])->checks[0];
+		assert_near(limit_named(use, "rise_time")->max, i ? 0.12 : 0.06, 1e-12, "s");
+		assert_near(limit_named(use, "settling_time")->max, i ? 0.3 : 0.2, 1e-12, "s");
+	}
+	arena_release(&f.arena);
+}
+
+static void the_repeats_of_a_point_share_their_population(void **state)
+{
+	(void)state;
+	struct fixture f;
+	load_with(&f, SOURCE_DIR "/tests/golden/suite-population-good/rig.yaml",
+	          SOURCE_DIR "/tests/golden/suite-population-good/suite.yaml", NULL, 0);
+	const struct population *population = test_named(&f, "SPD-01[1]")->population;
+	assert_non_null(population);
+	assert_ptr_equal(test_named(&f, "SPD-01[20]")->population, population);
+	assert_int_equal(population->judge, REPEATS_TOLERANCE_INTERVAL);
+	assert_int_equal(population->times, 20);
+	assert_near(population->coverage, 0.95, 1e-12, "");
+	assert_near(population->confidence, 0.90, 1e-12, "");
+	arena_release(&f.arena);
+}
+
 static void values_of_a_sweep_reach_steps_and_checks(void **state)
 {
 	struct fixture *f = *state;
@@ -370,6 +401,8 @@ int main(void)
 {
 	const struct CMUnitTest tests[] = {
 	    TEST(sweeps_and_repeats_become_cases_in_the_order_of_nested_loops),
+	    TEST(a_limit_tabled_over_the_sweep_takes_the_entry_of_its_point),
+	    TEST(the_repeats_of_a_point_share_their_population),
 	    TEST(values_of_a_sweep_reach_steps_and_checks),
 	    TEST(names_in_a_title_are_replaced_and_other_dollars_are_kept),
 	    TEST(limits_are_in_the_unit_of_their_metric),
