@@ -183,7 +183,7 @@ void capture_drain(struct capture *capture, int64_t now_ns)
 		    .device = -1,
 		    .link = -1,
 		    .channel = -1,
-		    .value = NAN,
+		    .value = (double)NAN,
 		    .number = (int)(capture->rows > INT32_MAX ? INT32_MAX : capture->rows)};
 		write_event(capture, &event);
 	}
