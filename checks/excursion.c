@@ -42,49 +42,128 @@ static double height(const struct search *search, size_t row)
 	return search->sign * (stretch_value(&search->response->rows, row) - search->response->final);
 }
 
+struct scan {
+	size_t half;
+	double largest;
+	size_t best; /* middle row of the largest mean */
+	bool counts; /* second pass: how many means are at least `least` */
+	double least;
+	size_t rivals;
+};
+
+/* All windows of 2 half + 1 rows that lie in [begin, end). */
+static void scan_rows(const struct search *search, size_t begin, size_t end, struct scan *scan)
+{
+	size_t width = 2 * scan->half + 1;
+	double n = (double)width, sum = 0;
+	for (size_t row = begin; row < end; row++) {
+		sum += height(search, row);
+		if (row >= begin + width)
+			sum -= height(search, row - width);
+		if (row + 1 < begin + width)
+			continue;
+		double mean = sum / n;
+		if (scan->counts) {
+			scan->rivals += mean >= scan->least;
+		} else if (mean > scan->largest) {
+			scan->largest = mean;
+			scan->best = row - scan->half;
+		}
+	}
+}
+
+/* What no height in a block exceeds. */
+static double block_height(const struct search *search, size_t block)
+{
+	const struct response *response = search->response;
+	return search->sign > 0 ? response->extents.most[block] - response->final
+	                        : response->final - response->extents.least[block];
+}
+
+/*
+ * The same, but only around blocks that reach `least`: a mean is no larger than
+ * the largest value in it.
+ */
+static void scan_blocks(const struct search *search, double least, struct scan *scan)
+{
+	const struct extents *extents = &search->response->extents;
+	size_t reach = 2 * scan->half, from = 0, to = 0;
+	for (size_t block = search->begin / extents->rows; block * extents->rows < search->end;
+	     block++) {
+		if (block_height(search, block) < least)
+			continue;
+		size_t begin = block * extents->rows, end = begin + extents->rows + reach;
+		begin = begin > search->begin + reach ? begin - reach : search->begin;
+		end = end < search->end ? end : search->end;
+		if (begin > to || from == to) {
+			scan_rows(search, from, to, scan);
+			from = begin;
+		}
+		to = end;
+	}
+	scan_rows(search, from, to, scan);
+}
+
+/* The neighbourhood of the block that reaches highest: a lower bound of the largest mean. */
+static void scan_highest(const struct search *search, struct scan *scan)
+{
+	const struct extents *extents = &search->response->extents;
+	size_t highest = search->begin / extents->rows;
+	for (size_t block = highest; block * extents->rows < search->end; block++)
+		if (block_height(search, block) > block_height(search, highest))
+			highest = block;
+	size_t reach = 2 * scan->half, begin = highest * extents->rows;
+	size_t end = begin + extents->rows + reach;
+	begin = begin > search->begin + reach ? begin - reach : search->begin;
+	scan_rows(search, begin, end < search->end ? end : search->end, scan);
+}
+
 /* Row with the largest mean of 2 half + 1 rows, that mean, and how many are near it. */
 static size_t largest_mean(const struct search *search, size_t half, double near, double *ret_mean,
                            double *ret_rivals)
 {
-	size_t width = 2 * half + 1, best = search->begin;
-	double n = (double)width, largest = -(double)INFINITY, sum = 0;
-	for (int pass = 0; pass < 2; pass++) {
-		size_t rivals = 0, ties = 0, first_best = 0;
-		sum = 0;
-		for (size_t row = search->begin; row < search->end; row++) {
-			sum += height(search, row);
-			if (row >= search->begin + width)
-				sum -= height(search, row - width);
-			if (row + 1 < search->begin + width)
-				continue;
-			double mean = half ? sum / n : height(search, row);
-			if (pass == 0 && mean > largest) {
-				largest = mean;
-				best = row - half;
-			}
-			if (pass == 1) {
-				rivals += mean >= largest - near;
-				if (half == 0 && mean == largest) {
-					first_best = ties++ ? first_best : row;
-				}
-			}
-		}
-		if (pass == 1) {
-			*ret_rivals = (double)rivals / n;
-			if (half == 0 && ties > 1 && height(search, first_best + ties / 2) == largest)
-				best = first_best + ties / 2; /* the middle of a plateau */
-		}
+	bool blocks = search->response->extents.blocks > 0;
+	struct scan scan = {.half = half, .largest = -(double)INFINITY, .best = search->begin};
+	if (blocks) {
+		scan_highest(search, &scan);
+		scan_blocks(search, scan.largest, &scan);
+	} else {
+		scan_rows(search, search->begin, search->end, &scan);
 	}
-	*ret_mean = largest;
-	return best;
+	scan.counts = true;
+	scan.least = scan.largest - near;
+	if (blocks)
+		scan_blocks(search, scan.least, &scan);
+	else
+		scan_rows(search, search->begin, search->end, &scan);
+	*ret_rivals = (double)scan.rivals / (double)(2 * half + 1);
+	*ret_mean = scan.largest;
+	return scan.best;
+}
+
+/* The row of the largest value; of several that are equal the middle one. */
+static size_t largest_row(const struct search *search, double *ret_height)
+{
+	size_t best = search->begin, ties = 0;
+	double largest = -(double)INFINITY;
+	for (size_t row = search->begin; row < search->end; row++) {
+		double here = height(search, row);
+		if (here > largest) {
+			largest = here;
+			best = row;
+			ties = 0;
+		}
+		ties += here == largest;
+	}
+	*ret_height = largest;
+	return ties > 1 && height(search, best + ties / 2) == largest ? best + ties / 2 : best;
 }
 
 /* Without noise: the largest sample; a parabola says how much may lie beside it. */
 static void without_noise(const struct search *search, struct excursion *ret)
 {
-	double rivals;
 	const struct stretch *rows = &search->response->rows;
-	size_t row = largest_mean(search, 0, 0, &ret->height, &rivals);
+	size_t row = largest_row(search, &ret->height);
 	ret->found = ret->exact = true;
 	ret->row = row;
 	ret->t = stretch_time(rows, row);

@@ -226,6 +226,9 @@ static void turn_to_dip(struct load_work *work)
 	response->final_u = response->initial_u = budget_expanded(&budget) / 2;
 	response->error_limit = 0; /* both values are of the same instrument, near each other */
 	response->direction = 1;
+	/* The pace of a step is none of a dip. */
+	response->gap_most = rows_gap_limit(work->step.in, &work->step.rows);
+	response->rise = response->busy_until = 0;
 	work->begin = work->step.initial_count;
 	const struct stretch *rows = &response->rows;
 	while (work->begin < rows->count - 1 && stretch_time(rows, work->begin) < 0)

@@ -74,6 +74,21 @@ static bool between_rows(struct pairing *pairing, size_t row_a, double *ret_valu
 	return true;
 }
 
+/* Between compared rows, and to the end of the span. */
+static void measure_gaps(struct rows *rows)
+{
+	rows->gap_ns = 0;
+	for (size_t i = 0; i < rows->count; i++) {
+		int64_t at = series_received(&rows->series, i);
+		int64_t next =
+		    i + 1 < rows->count ? series_received(&rows->series, i + 1) : rows->span.to_ns;
+		if (next - at > rows->gap_ns) {
+			rows->gap_ns = next - at;
+			rows->gap_at_ns = at;
+		}
+	}
+}
+
 static int compare(const struct check_input *in, struct pairing *pairing, double turn,
                    struct pairs *pairs, struct err *reterr)
 {
@@ -112,6 +127,7 @@ static int compare(const struct check_input *in, struct pairing *pairing, double
 	    .block = -1,
 	    .extra = extra,
 	};
+	measure_gaps(&pairs->rows);
 	return 0;
 }
 

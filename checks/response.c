@@ -182,6 +182,32 @@ struct settling {
 	int side;              /* of the last row surely outside */
 };
 
+/* Whether no value of the rows [begin, end) is further than `reach` from the final one. */
+static bool surely_within(const struct response *response, size_t begin, size_t end, double reach)
+{
+	const struct extents *extents = &response->extents;
+	for (size_t block = begin / extents->rows; block * extents->rows < end; block++)
+		if (extents->most[block] - response->final > reach ||
+		    response->final - extents->least[block] > reach)
+			return false;
+	return true;
+}
+
+/*
+ * How many rows down from `row` (itself included) surely stay within `reach`,
+ * averaged over `half` rows on either side: whole blocks, 0 where none.
+ */
+static size_t rows_within(const struct response *response, size_t row, size_t half, double reach)
+{
+	const struct extents *extents = &response->extents;
+	if (extents->blocks == 0 || (row + 1) % extents->rows != 0 || !(reach > 0))
+		return 0;
+	size_t begin = row + 1 - extents->rows, count = response->rows.count;
+	size_t from = begin > half ? begin - half : 0;
+	size_t to = row + half + 1 < count ? row + half + 1 : count;
+	return surely_within(response, from, to, reach) ? extents->rows : 0;
+}
+
 static void search_settling(const struct response *response, struct settling *settling)
 {
 	size_t count = response->rows.count;
@@ -196,6 +222,14 @@ static void search_settling(const struct response *response, struct settling *se
 	settling->sure = 3 * sigma_row + 2 * settling->edge_u;
 	struct smooth smooth = {response, settling->half, count, count, 0};
 	for (size_t row = count; row-- > 0;) {
+		size_t skip = rows_within(response, row, settling->half, settling->band - settling->sure);
+		if (skip > 0) {
+			row -= skip - 1;
+			smooth.begin = row + settling->half < count ? row + settling->half : count;
+			smooth.end = smooth.begin;
+			smooth.sum = 0;
+			continue;
+		}
 		double d = smooth_down(&smooth, row);
 		if (!settling->doubt_found && fabs(d) > settling->band - settling->sure) {
 			settling->doubt_found = true;
@@ -214,9 +248,13 @@ static void search_settling(const struct response *response, struct settling *se
 static double last_exit(const struct response *response, double band, double low, double high)
 {
 	size_t row = response->rows.count;
-	while (row-- > 0)
-		if (fabs(deviation(response, row)) > band)
+	while (row-- > 0) {
+		size_t skip = rows_within(response, row, 0, band);
+		if (skip > 0)
+			row -= skip - 1;
+		else if (fabs(deviation(response, row)) > band)
 			break;
+	}
 	if (row == SIZE_MAX || row + 1 >= response->rows.count)
 		return low + (high - low) / 2;
 	double t = (stretch_time(&response->rows, row) + stretch_time(&response->rows, row + 1)) / 2;

@@ -11,7 +11,17 @@
  */
 #include "crossing.h"
 
+/*
+ * Smallest and largest value of each block of rows, so that a search need not
+ * look at blocks that cannot hold what it seeks. blocks 0: not there.
+ */
+struct extents {
+	const double *least, *most;
+	size_t rows, blocks; /* rows of a block; the last one may have fewer */
+};
+
 struct response {
+	struct extents extents;
 	struct stretch rows; /* from before the step to the end of what is judged */
 	double mark_half;    /* the mark lies in [-mark_half, mark_half] */
 	int direction;       /* +1 or -1: the sign of the step */

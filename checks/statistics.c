@@ -54,6 +54,40 @@ double sum_value(const struct sum *sum)
 	return sum->total + sum->lost;
 }
 
+/*
+ * Sums over long stretches: plain sums of short groups, which then go into a
+ * compensated one. Short stretches are compensated row by row.
+ */
+struct pile {
+	struct sum sum;
+	double plain;
+	int count, group;
+};
+
+enum { LONG_STRETCH = 4096, GROUP = 64 };
+
+static struct pile pile_of(size_t n)
+{
+	return (struct pile){.group = n < LONG_STRETCH ? 1 : GROUP};
+}
+
+static inline void pile_add(struct pile *pile, double x)
+{
+	pile->plain += x;
+	if (++pile->count < pile->group)
+		return;
+	sum_add(&pile->sum, pile->plain);
+	pile->plain = 0;
+	pile->count = 0;
+}
+
+static double pile_value(const struct pile *pile)
+{
+	struct sum sum = pile->sum;
+	sum_add(&sum, pile->plain);
+	return sum_value(&sum);
+}
+
 static double independent_rows(size_t n, double lag1)
 {
 	double rows = (double)n;
@@ -66,35 +100,35 @@ static double independent_rows(size_t n, double lag1)
 void summarise(const struct stretch *stretch, struct summary *ret_summary)
 {
 	size_t n = stretch->count;
-	struct sum sum = {0};
+	struct pile sum = pile_of(n);
 	double least = (double)INFINITY, largest = -(double)INFINITY;
 	for (size_t i = 0; i < n; i++) {
 		double y = stretch_value(stretch, i);
-		sum_add(&sum, y);
+		pile_add(&sum, y);
 		least = y < least ? y : least;
 		largest = y > largest ? y : largest;
 	}
-	double mean = sum_value(&sum) / (double)n;
-	struct sum rest = {0}, squares = {0}, products = {0};
+	double mean = pile_value(&sum) / (double)n;
+	struct pile rest = pile_of(n), squares = pile_of(n), products = pile_of(n);
 	double before = 0;
 	for (size_t i = 0; i < n; i++) {
 		double d = stretch_value(stretch, i) - mean;
-		sum_add(&rest, d);
-		sum_add(&squares, d * d);
+		pile_add(&rest, d);
+		pile_add(&squares, d * d);
 		if (i > 0)
-			sum_add(&products, before * d);
+			pile_add(&products, before * d);
 		before = d;
 	}
 	/* The mean of the deviations is what rounding of the mean left out. */
-	double correction = sum_value(&rest) / (double)n;
-	double ss = sum_value(&squares) - (double)n * correction * correction;
+	double correction = pile_value(&rest) / (double)n;
+	double ss = pile_value(&squares) - (double)n * correction * correction;
 	if (!(ss > 0))
 		ss = isnan(ss) ? ss : 0;
 	*ret_summary = (struct summary){
 	    .n = n,
 	    .mean = mean + correction,
 	    .sd = n > 1 ? sqrt(ss / (double)(n - 1)) : 0,
-	    .lag1 = ss > 0 ? sum_value(&products) / ss : 0,
+	    .lag1 = ss > 0 ? pile_value(&products) / ss : 0,
 	    .least = least,
 	    .largest = largest,
 	};
@@ -106,33 +140,33 @@ bool line_fit(const struct stretch *stretch, struct line *ret_line)
 	size_t n = stretch->count;
 	if (n < 3)
 		return false;
-	struct sum sum_t = {0}, sum_y = {0};
+	struct pile sum_t = pile_of(n), sum_y = pile_of(n);
 	for (size_t i = 0; i < n; i++) {
-		sum_add(&sum_t, stretch_time(stretch, i));
-		sum_add(&sum_y, stretch_value(stretch, i));
+		pile_add(&sum_t, stretch_time(stretch, i));
+		pile_add(&sum_y, stretch_value(stretch, i));
 	}
-	double mean_t = sum_value(&sum_t) / (double)n, mean_y = sum_value(&sum_y) / (double)n;
-	struct sum tt = {0}, ty = {0};
+	double mean_t = pile_value(&sum_t) / (double)n, mean_y = pile_value(&sum_y) / (double)n;
+	struct pile tt = pile_of(n), ty = pile_of(n);
 	for (size_t i = 0; i < n; i++) {
 		double t = stretch_time(stretch, i) - mean_t;
-		sum_add(&tt, t * t);
-		sum_add(&ty, t * (stretch_value(stretch, i) - mean_y));
+		pile_add(&tt, t * t);
+		pile_add(&ty, t * (stretch_value(stretch, i) - mean_y));
 	}
-	double stt = sum_value(&tt);
+	double stt = pile_value(&tt);
 	if (!(stt > 0))
 		return false;
-	double slope = sum_value(&ty) / stt;
-	struct sum squares = {0}, products = {0};
+	double slope = pile_value(&ty) / stt;
+	struct pile squares = pile_of(n), products = pile_of(n);
 	double before = 0;
 	for (size_t i = 0; i < n; i++) {
 		double t = stretch_time(stretch, i) - mean_t;
 		double rest = stretch_value(stretch, i) - mean_y - slope * t;
-		sum_add(&squares, rest * rest);
+		pile_add(&squares, rest * rest);
 		if (i > 0)
-			sum_add(&products, before * rest);
+			pile_add(&products, before * rest);
 		before = rest;
 	}
-	double ss = sum_value(&squares);
+	double ss = pile_value(&squares);
 	*ret_line = (struct line){
 	    .n = n,
 	    .mean_t = mean_t,
@@ -142,7 +176,7 @@ bool line_fit(const struct stretch *stretch, struct line *ret_line)
 	    .slope_se = sqrt(ss / (double)(n - 2) / stt),
 	    .intercept = mean_y - slope * mean_t,
 	    .residual_sd = sqrt(ss / (double)(n - 2)),
-	    .residual_lag1 = ss > 0 ? sum_value(&products) / ss : 0,
+	    .residual_lag1 = ss > 0 ? pile_value(&products) / ss : 0,
 	};
 	ret_line->independent = independent_rows(n, ret_line->residual_lag1);
 	return true;

@@ -75,6 +75,35 @@ double step_rated(const struct machine *machine, const struct channel_info *chan
 	return value / channel->unit->scale;
 }
 
+enum { EXTENT_ROWS = 256 };
+
+/* For long recordings; without memory for it searches look at every row. */
+static void find_extents(struct step_work *work, struct extents *ret)
+{
+	const struct rows *rows = &work->rows;
+	size_t blocks = (rows->count + EXTENT_ROWS - 1) / EXTENT_ROWS;
+	*ret = (struct extents){0};
+	if (rows->count < 16 * EXTENT_ROWS)
+		return;
+	double *least = arena_array(work->in->scratch, blocks, sizeof *least);
+	double *most = arena_array(work->in->scratch, blocks, sizeof *most);
+	if (!least || !most)
+		return;
+	for (size_t b = 0; b < blocks; b++) {
+		size_t begin = b * EXTENT_ROWS, end = begin + EXTENT_ROWS;
+		end = end < rows->count ? end : rows->count;
+		double low = series_value(&rows->series, rows->first + begin), high = low;
+		for (size_t i = begin + 1; i < end; i++) {
+			double value = series_value(&rows->series, rows->first + i);
+			low = value < low ? value : low;
+			high = value > high ? value : high;
+		}
+		least[b] = low;
+		most[b] = high;
+	}
+	*ret = (struct extents){least, most, EXTENT_ROWS, blocks};
+}
+
 /* Levels, step and noise, from stretches that may still prove unsteady. */
 bool step_levels(struct step_work *work)
 {
@@ -126,6 +155,7 @@ bool step_levels(struct step_work *work)
 		               work->channel->name);
 		return false;
 	}
+	find_extents(work, &response->extents);
 	response_pace(response);
 	return true;
 }

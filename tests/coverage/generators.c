@@ -462,6 +462,7 @@ static void fault_reaction(struct campaign *c)
 	recording_clear(&rec);
 	struct polling p = draw_polling(c, draw(c, 1, 8));
 	double mark = draw(c, 0, 10), cause = draw(c, 0, mark);
+	double seen_a = -1e9, seen_b = -1e9;
 	double detection = draw(c, 0.5, 40), off = detection + draw(c, 0.5, 40);
 	rec.sample_ns = MS(p.interval);
 	rec.channels[0].refresh_ns = MS(p.refresh);
@@ -471,7 +472,9 @@ static void fault_reaction(struct campaign *c)
 	rec.end_ns = MS(400);
 	for (double t = -99 + draw(c, 0, 1); t < 395; t += p.interval) {
 		struct poll a = poll_at(c, &p, t), b = poll_at(c, &p, t);
-		b.taken = fmin(fmax(b.taken, a.sent - p.refresh), a.received);
+		/* A register image is never older than it was at the poll before. */
+		a.taken = seen_a = fmax(a.taken, seen_a);
+		b.taken = seen_b = fmax(fmin(fmax(b.taken, a.sent - p.refresh), a.received), seen_b);
 		add(c, &rec, 0, &p, &a, a.taken - cause < detection ? 0 : 3);
 		add(c, &rec, 1, &p, &b, b.taken - cause < off ? 1 : 0);
 	}
