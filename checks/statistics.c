@@ -18,17 +18,27 @@ double wrap_half(double x, double turn)
 	return wrapped <= -turn / 2 ? wrapped + turn : wrapped;
 }
 
-double stretch_time(const struct stretch *stretch, size_t i)
+static inline double time_at(const struct stretch *stretch, size_t i)
 {
 	int64_t earliest = series_earliest(stretch->series, stretch->first + i) - stretch->origin_ns;
 	int64_t latest = series_latest(stretch->series, stretch->first + i) - stretch->origin_ns;
 	return ((double)earliest + (double)latest) / 2e9;
 }
 
-double stretch_value(const struct stretch *stretch, size_t i)
+static inline double value_at(const struct stretch *stretch, size_t i)
 {
 	double value = series_value(stretch->series, stretch->first + i);
 	return stretch->turn > 0 ? wrap_half(value - stretch->around, stretch->turn) : value;
+}
+
+double stretch_time(const struct stretch *stretch, size_t i)
+{
+	return time_at(stretch, i);
+}
+
+double stretch_value(const struct stretch *stretch, size_t i)
+{
+	return value_at(stretch, i);
 }
 
 double stretch_time_u(const struct stretch *stretch, size_t i)
@@ -55,37 +65,15 @@ double sum_value(const struct sum *sum)
 }
 
 /*
- * Sums over long stretches: plain sums of short groups, which then go into a
- * compensated one. Short stretches are compensated row by row.
+ * Sums over long stretches: plain sums of short groups of rows, which then go
+ * into compensated ones. Short stretches are compensated row by row.
  */
-struct pile {
-	struct sum sum;
-	double plain;
-	int count, group;
-};
-
 enum { LONG_STRETCH = 4096, GROUP = 64 };
 
-static struct pile pile_of(size_t n)
+static size_t group_end(size_t begin, size_t n)
 {
-	return (struct pile){.group = n < LONG_STRETCH ? 1 : GROUP};
-}
-
-static inline void pile_add(struct pile *pile, double x)
-{
-	pile->plain += x;
-	if (++pile->count < pile->group)
-		return;
-	sum_add(&pile->sum, pile->plain);
-	pile->plain = 0;
-	pile->count = 0;
-}
-
-static double pile_value(const struct pile *pile)
-{
-	struct sum sum = pile->sum;
-	sum_add(&sum, pile->plain);
-	return sum_value(&sum);
+	size_t end = begin + (n < LONG_STRETCH ? 1 : GROUP);
+	return end < n ? end : n;
 }
 
 static double independent_rows(size_t n, double lag1)
@@ -100,35 +88,46 @@ static double independent_rows(size_t n, double lag1)
 void summarise(const struct stretch *stretch, struct summary *ret_summary)
 {
 	size_t n = stretch->count;
-	struct pile sum = pile_of(n);
+	struct sum sum = {0};
 	double least = (double)INFINITY, largest = -(double)INFINITY;
-	for (size_t i = 0; i < n; i++) {
-		double y = stretch_value(stretch, i);
-		pile_add(&sum, y);
-		least = y < least ? y : least;
-		largest = y > largest ? y : largest;
+	for (size_t begin = 0, end; begin < n; begin = end) {
+		double part = 0;
+		end = group_end(begin, n);
+		for (size_t i = begin; i < end; i++) {
+			double y = value_at(stretch, i);
+			part += y;
+			least = y < least ? y : least;
+			largest = y > largest ? y : largest;
+		}
+		sum_add(&sum, part);
 	}
-	double mean = pile_value(&sum) / (double)n;
-	struct pile rest = pile_of(n), squares = pile_of(n), products = pile_of(n);
+	double mean = sum_value(&sum) / (double)n;
+	struct sum rest = {0}, squares = {0}, products = {0};
 	double before = 0;
-	for (size_t i = 0; i < n; i++) {
-		double d = stretch_value(stretch, i) - mean;
-		pile_add(&rest, d);
-		pile_add(&squares, d * d);
-		if (i > 0)
-			pile_add(&products, before * d);
-		before = d;
+	for (size_t begin = 0, end; begin < n; begin = end) {
+		double rest_part = 0, squares_part = 0, products_part = 0;
+		end = group_end(begin, n);
+		for (size_t i = begin; i < end; i++) {
+			double d = value_at(stretch, i) - mean;
+			rest_part += d;
+			squares_part += d * d;
+			products_part += before * d; /* of the first row with 0 */
+			before = d;
+		}
+		sum_add(&rest, rest_part);
+		sum_add(&squares, squares_part);
+		sum_add(&products, products_part);
 	}
 	/* The mean of the deviations is what rounding of the mean left out. */
-	double correction = pile_value(&rest) / (double)n;
-	double ss = pile_value(&squares) - (double)n * correction * correction;
+	double correction = sum_value(&rest) / (double)n;
+	double ss = sum_value(&squares) - (double)n * correction * correction;
 	if (!(ss > 0))
 		ss = isnan(ss) ? ss : 0;
 	*ret_summary = (struct summary){
 	    .n = n,
 	    .mean = mean + correction,
 	    .sd = n > 1 ? sqrt(ss / (double)(n - 1)) : 0,
-	    .lag1 = ss > 0 ? pile_value(&products) / ss : 0,
+	    .lag1 = ss > 0 ? sum_value(&products) / ss : 0,
 	    .least = least,
 	    .largest = largest,
 	};
@@ -140,33 +139,50 @@ bool line_fit(const struct stretch *stretch, struct line *ret_line)
 	size_t n = stretch->count;
 	if (n < 3)
 		return false;
-	struct pile sum_t = pile_of(n), sum_y = pile_of(n);
-	for (size_t i = 0; i < n; i++) {
-		pile_add(&sum_t, stretch_time(stretch, i));
-		pile_add(&sum_y, stretch_value(stretch, i));
+	struct sum sum_t = {0}, sum_y = {0};
+	for (size_t begin = 0, end; begin < n; begin = end) {
+		double t_part = 0, y_part = 0;
+		end = group_end(begin, n);
+		for (size_t i = begin; i < end; i++) {
+			t_part += time_at(stretch, i);
+			y_part += value_at(stretch, i);
+		}
+		sum_add(&sum_t, t_part);
+		sum_add(&sum_y, y_part);
 	}
-	double mean_t = pile_value(&sum_t) / (double)n, mean_y = pile_value(&sum_y) / (double)n;
-	struct pile tt = pile_of(n), ty = pile_of(n);
-	for (size_t i = 0; i < n; i++) {
-		double t = stretch_time(stretch, i) - mean_t;
-		pile_add(&tt, t * t);
-		pile_add(&ty, t * (stretch_value(stretch, i) - mean_y));
+	double mean_t = sum_value(&sum_t) / (double)n, mean_y = sum_value(&sum_y) / (double)n;
+	struct sum tt = {0}, ty = {0};
+	for (size_t begin = 0, end; begin < n; begin = end) {
+		double tt_part = 0, ty_part = 0;
+		end = group_end(begin, n);
+		for (size_t i = begin; i < end; i++) {
+			double t = time_at(stretch, i) - mean_t;
+			tt_part += t * t;
+			ty_part += t * (value_at(stretch, i) - mean_y);
+		}
+		sum_add(&tt, tt_part);
+		sum_add(&ty, ty_part);
 	}
-	double stt = pile_value(&tt);
+	double stt = sum_value(&tt);
 	if (!(stt > 0))
 		return false;
-	double slope = pile_value(&ty) / stt;
-	struct pile squares = pile_of(n), products = pile_of(n);
+	double slope = sum_value(&ty) / stt;
+	struct sum squares = {0}, products = {0};
 	double before = 0;
-	for (size_t i = 0; i < n; i++) {
-		double t = stretch_time(stretch, i) - mean_t;
-		double rest = stretch_value(stretch, i) - mean_y - slope * t;
-		pile_add(&squares, rest * rest);
-		if (i > 0)
-			pile_add(&products, before * rest);
-		before = rest;
+	for (size_t begin = 0, end; begin < n; begin = end) {
+		double squares_part = 0, products_part = 0;
+		end = group_end(begin, n);
+		for (size_t i = begin; i < end; i++) {
+			double t = time_at(stretch, i) - mean_t;
+			double rest = value_at(stretch, i) - mean_y - slope * t;
+			squares_part += rest * rest;
+			products_part += before * rest;
+			before = rest;
+		}
+		sum_add(&squares, squares_part);
+		sum_add(&products, products_part);
 	}
-	double ss = pile_value(&squares);
+	double ss = sum_value(&squares);
 	*ret_line = (struct line){
 	    .n = n,
 	    .mean_t = mean_t,
@@ -176,7 +192,7 @@ bool line_fit(const struct stretch *stretch, struct line *ret_line)
 	    .slope_se = sqrt(ss / (double)(n - 2) / stt),
 	    .intercept = mean_y - slope * mean_t,
 	    .residual_sd = sqrt(ss / (double)(n - 2)),
-	    .residual_lag1 = ss > 0 ? pile_value(&products) / ss : 0,
+	    .residual_lag1 = ss > 0 ? sum_value(&products) / ss : 0,
 	};
 	ret_line->independent = independent_rows(n, ret_line->residual_lag1);
 	return true;

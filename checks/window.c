@@ -77,6 +77,8 @@ static void find_range(const struct series *series, struct span span, size_t *re
 	*ret_end = low;
 }
 
+enum { PART_ROWS = 512 }; /* fit into the first cache */
+
 /*
  * One pass that finds nothing wrong in most recordings: rows in order, none
  * missing in [first, end), and the longest time between two of them. False:
@@ -85,28 +87,32 @@ static void find_range(const struct series *series, struct span span, size_t *re
 static bool all_well(const struct series *series, size_t first, size_t end, int64_t *ret_gap,
                      size_t *ret_gap_row)
 {
-	int64_t sent_before = INT64_MIN, received_before = INT64_MIN, gap = 0;
-	size_t gap_row = first;
+	int64_t sent_before = series_sent(series, 0), received_before = series_received(series, 0);
+	int64_t backwards = received_before - sent_before, gap = 0; /* negative: a sign bit is set */
 	int wrong = series->bad_count > 0;
-	for (size_t row = 0; row < series->rows; row++) {
-		int64_t sent = series_sent(series, row), received = series_received(series, row);
-		double value = series_value(series, row);
-		wrong |= received < sent;
-		wrong |= sent < sent_before;
-		wrong |= received < received_before;
-		wrong |= (sent == sent_before) & (received == received_before);
-		bool inside = row >= first && row < end;
-		wrong |= inside & (value != value);
-		if (inside && row > first && received - received_before > gap) {
-			gap = received - received_before;
-			gap_row = row - 1;
+	*ret_gap_row = first;
+	for (size_t part = 0; part < series->rows; part += PART_ROWS) {
+		size_t last = part + PART_ROWS < series->rows ? part + PART_ROWS : series->rows;
+		for (size_t row = part > 0 ? part : 1; row < last; row++) {
+			int64_t sent = series_sent(series, row), received = series_received(series, row);
+			int64_t later = received - received_before;
+			backwards |= (received - sent) | (sent - sent_before) | later;
+			wrong |= (sent == sent_before) & (later == 0);
+			if (later > gap && row > first && row < end) {
+				gap = later;
+				*ret_gap_row = row - 1;
+			}
+			sent_before = sent;
+			received_before = received;
 		}
-		sent_before = sent;
-		received_before = received;
+		/* The values, while the part is at hand. */
+		for (size_t row = part > first ? part : first; row < last && row < end; row++) {
+			double value = series_value(series, row);
+			wrong |= value != value;
+		}
 	}
 	*ret_gap = gap;
-	*ret_gap_row = gap_row;
-	return !wrong;
+	return backwards >= 0 && !wrong;
 }
 
 /* Out of order, repeated, dated backwards: nothing can be dated then. */
