@@ -82,8 +82,10 @@ static void put_relative(const struct check_input *in, const struct agreement *o
 		return;
 	}
 	double low = mean - expanded, high = mean + expanded, most = reference + doubt;
-	put_value(ret, &metrics[RELATIVE], unit_percent(), evidence, 100 * mean / reference,
-	          100 * fmin(low / least, low / most), 100 * fmax(high / least, high / most), 0.95);
+	double value = mean / reference; /* rounding must not put it beside its interval */
+	put_value(ret, &metrics[RELATIVE], unit_percent(), evidence, 100 * value,
+	          100 * fmin(value, fmin(low / least, low / most)),
+	          100 * fmax(value, fmax(high / least, high / most)), 0.95);
 }
 
 static int evaluate(const struct check_input *in, const void *params, struct metric *ret_metrics,

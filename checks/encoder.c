@@ -165,8 +165,8 @@ static int find_direction(const struct check_input *in, const struct encoder *ow
 		turned += wrap_half(series_value(&rows.series, rows.first + i) -
 		                        series_value(&rows.series, rows.first + i - 1),
 		                    turn);
-	double doubt =
-	    2 * (channel->resolution + rows_error_limit(&rows, 0, rows.usable ? rows.count : 0));
+	double limit = rows.usable ? rows_error_limit(&rows, 0, rows.count) : 0;
+	double doubt = 2 * (channel->resolution + limit);
 	if (known && (commanded == 0 || fabs(turned) <= fmax(doubt, turn / 100))) {
 		known = false;
 		(void)snprintf(why, sizeof why, "%s turned by %.3g %s at a command of %.4g: no direction",

@@ -163,9 +163,10 @@ static void put_means(const struct tracking *own, const struct check_input *in,
 	double sign = rise > 0 ? -1 : 1, size = fabs(rise);
 	double low = fmin(sign * (mean - expanded), sign * (mean + expanded)) * duration;
 	double high = fmax(sign * (mean - expanded), sign * (mean + expanded)) * duration;
-	put_value(&ret_metrics[LAG], &metrics[LAG], second, channel->evidence,
-	          sign * mean * duration / size, fmin(low / (size - doubt), low / (size + doubt)),
-	          fmax(high / (size - doubt), high / (size + doubt)), 0.95);
+	double value = sign * mean * duration / size; /* rounding must not put it beside its interval */
+	put_value(&ret_metrics[LAG], &metrics[LAG], second, channel->evidence, value,
+	          fmin(value, fmin(low / (size - doubt), low / (size + doubt))),
+	          fmax(value, fmax(high / (size - doubt), high / (size + doubt))), 0.95);
 }
 
 static int judge(const struct check_input *in, const struct tracking *own, struct span span,
