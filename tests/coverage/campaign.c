@@ -72,6 +72,9 @@ void tally_add(struct campaign *campaign, const struct used_check *use, const ch
 	double rounding = 1e-9 * (1 + fabs(truth));
 	tally->guaranteed = tally->guaranteed && metric->coverage == 1;
 	tally->held += metric->low - rounding <= truth && truth <= metric->high + rounding;
+	if (tally->guaranteed && !(metric->low - rounding <= truth && truth <= metric->high + rounding))
+		fprintf(stderr, "%s %s: truth %.9g not in [%.9g, %.9g]: %s\n", tally->check, name, truth,
+		        metric->low, metric->high, metric->note);
 	tally->errors[at] = fabs(metric->value - truth);
 	tally->widths[at] = (metric->high - metric->low) / 2;
 	if (tally->scale > 0)

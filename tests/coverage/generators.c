@@ -474,7 +474,7 @@ static void fault_reaction(struct campaign *c)
 		struct poll a = poll_at(c, &p, t), b = poll_at(c, &p, t);
 		/* A register image is never older than it was at the poll before. */
 		a.taken = seen_a = fmax(a.taken, seen_a);
-		b.taken = seen_b = fmax(fmin(fmax(b.taken, a.sent - p.refresh), a.received), seen_b);
+		b.taken = seen_b = fmax(b.taken, seen_b);
 		add(c, &rec, 0, &p, &a, a.taken - cause < detection ? 0 : 3);
 		add(c, &rec, 1, &p, &b, b.taken - cause < off ? 1 : 0);
 	}
