@@ -29,7 +29,7 @@ struct journal_event conductor_event(const struct conductor *conductor, enum jou
 	                              .device = -1,
 	                              .link = -1,
 	                              .channel = -1,
-	                              .value = NAN};
+	                              .value = (double)NAN};
 }
 
 void conductor_tell(struct conductor *conductor, const struct journal_event *event)
@@ -158,7 +158,7 @@ int conductor_new(const struct conductor_config *config, struct conductor **ret_
 		goto fail;
 	}
 	for (size_t i = 0; i < config->rig->channel_count; i++)
-		conductor->commanded[i] = NAN;
+		conductor->commanded[i] = (double)NAN;
 	if (check_conditions(conductor, reterr) < 0 ||
 	    ring_init(&conductor->events, sizeof(struct journal_event), 8192, reterr) < 0 ||
 	    test_plans_make(conductor, config->arena, &most, reterr) < 0 ||
@@ -313,7 +313,7 @@ static void before_tick(struct conductor *conductor, int64_t now_ns, int64_t *du
 			conductor->before_begin_ns = now_ns;
 		}
 		struct worker *worker = conductor->workers[conductor->before_worker];
-		struct watch watch = {.value = NAN};
+		struct watch watch = {.value = (double)NAN};
 		if (conductor->before_watch >= 0)
 			worker_watch_get(worker, conductor->before_watch, &watch);
 		int64_t until = conductor->before_begin_ns + before->condition.for_ns +

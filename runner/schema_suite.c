@@ -66,7 +66,9 @@ static json_t *limits_of(const struct check_kind *kind)
 {
 	json_t *metrics = json_object();
 	for (size_t m = 0; m < kind->metric_count; m++) {
-		json_t *limit = limit_of(&kind->metrics[m]);
+		/* A limit, or a table of limits by the points of a sweep. */
+		json_t *table = json_pack("{s:s,s:[s]}", "type", "object", "required", "at");
+		json_t *limit = schema_either(limit_of(&kind->metrics[m]), table);
 		(void)json_object_set_new(metrics, kind->metrics[m].name, limit);
 	}
 	return json_pack("{s:s,s:o,s:i,s:b}", "type", "object", "properties", metrics, "minProperties",

@@ -83,7 +83,7 @@ static int write_identities(struct session *session, struct err *err)
 		                              .test = -1,
 		                              .link = -1,
 		                              .channel = -1,
-		                              .value = NAN};
+		                              .value = (double)NAN};
 		event.time_ns = clock_now(&session->clock);
 		event.device = rig_device_find(session->rig, read->device, strlen(read->device));
 		(void)snprintf(event.name, sizeof event.name, "%s", read->key);
@@ -146,7 +146,7 @@ void session_answer_gate(struct session *session)
 static int end_journal(struct session *session, struct err *err)
 {
 	struct journal_event event = {
-	    .suite = -1, .test = -1, .device = -1, .link = -1, .channel = -1, .value = NAN};
+	    .suite = -1, .test = -1, .device = -1, .link = -1, .channel = -1, .value = (double)NAN};
 	event.time_ns = clock_now(&session->clock);
 	int result = 0;
 	for (size_t i = 0; i < session->rig->link_count; i++) {

@@ -12,7 +12,7 @@ void watch_start(struct watch *watch, enum watch_kind kind, const struct conditi
 	                        .condition = *condition,
 	                        .active = true,
 	                        .not_before_ns = not_before_ns,
-	                        .value = NAN};
+	                        .value = (double)NAN};
 }
 
 static void fire(struct watch *watch)

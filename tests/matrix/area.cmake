@@ -10,3 +10,4 @@ foreach(script "matrix.py 1 3 --brief" "same_seed.py")
   set_tests_properties(matrix/${name} PROPERTIES TIMEOUT 600
     ENVIRONMENT "DRIVETRIAL=$<TARGET_FILE:drivetrial>;PYTHONDONTWRITEBYTECODE=1")
 endforeach()
+set_tests_properties(matrix/matrix PROPERTIES LABELS slow)

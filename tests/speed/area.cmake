@@ -16,3 +16,4 @@ foreach(words "long_run --hours 0.01" "disk.py")
   set_tests_properties(speed/${name} PROPERTIES TIMEOUT 300 SKIP_RETURN_CODE 77
     ENVIRONMENT "DRIVETRIAL=$<TARGET_FILE:drivetrial>;PYTHONDONTWRITEBYTECODE=1")
 endforeach()
+set_tests_properties(speed/short PROPERTIES LABELS slow)
