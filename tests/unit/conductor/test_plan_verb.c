@@ -100,8 +100,8 @@ static void times_of_another_rig_are_refused(void **state)
 	static const char *const WRONG[] = {
 	    "{\"format\": 1, \"rig\": \"other\", \"taken\": \"now\", \"links\": []}",
 	    "{\"format\": 2, \"rig\": \"template-rtu\", \"taken\": \"now\", \"links\": []}",
-	    "{\"format\": 1, \"rig\": \"template-rtu\", \"taken\": \"now\", \"links\": "
-	    "[{\"link\": \"drive_line\", \"between_ns\": -1, \"devices\": []}]}",
+	    ("{\"format\": 1, \"rig\": \"template-rtu\", \"taken\": \"now\", \"links\": "
+	     "[{\"link\": \"drive_line\", \"between_ns\": -1, \"devices\": []}]}"),
 	    "no json",
 	};
 	struct loaded loaded;
