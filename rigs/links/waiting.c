@@ -30,7 +30,8 @@ void waking_release(struct waking *waking)
 
 void waking_signal(struct waking *waking)
 {
-	/* In this order: a flag without a count is harmless, a count without a flag would stay. */
+	/* In this order: a flag without a count is harmless, a count without a flag is taken by who
+	 * waits next. */
 	(void)eventfd_write(waking->event_fd, 1);
 	atomic_store(&waking->signalled, true);
 }
@@ -63,8 +64,12 @@ enum waited waiting_for(const struct waking *waking, int fd, short events, int64
 		int ready = ppoll(fds, 2, &left, NULL);
 		if (ready < 0 && errno != EINTR)
 			return WAITED_FAILED;
-		if (ready > 0 && fds[0].revents)
+		if (ready > 0 && fds[0].revents) {
+			/* Taken here: the flag may come only after the next request has begun. */
+			eventfd_t count;
+			(void)eventfd_read(waking->event_fd, &count);
 			return WAITED_STOPPED;
+		}
 		if (ready > 0)
 			return WAITED_READY; /* errors and hang-ups show in the call that follows */
 		if (ready == 0 && left_ns == 0)
