@@ -62,13 +62,13 @@ def rehearsed(checks, seeds):
 def served(checks, times):
     with bench.folder() as base:
         for i in range(times):
-            with bench.Served(seed=i + 1) as server:
-                run = bench.run(server, bench.RELEASE, f"{base}/healthy-{i}")
+            with bench.Served(seed=i + 1, realtime=True) as server:
+                run = bench.run(server, bench.RELEASE, f"{base}/healthy-{i}", "--realtime")
                 checks.that(run.code == 0, f"healthy, time {i + 1}: exit {run.code}\n{run.stdout}")
                 checks.that(server.end()[0] == "rest", f"healthy, time {i + 1}: not at rest")
         for defect in CAUGHT:
-            with bench.Served(defect=defect) as server:
-                run = bench.run(server, bench.RELEASE, f"{base}/{defect}")
+            with bench.Served(defect=defect, realtime=True) as server:
+                run = bench.run(server, bench.RELEASE, f"{base}/{defect}", "--realtime")
                 check_defect(checks, run, defect)
                 checks.that(server.end()[0] == "rest", f"{defect}: not at rest")
 
